@@ -38,7 +38,7 @@ class Measured:
 
 
 def measure(scenario: Scenario) -> Measured:
-    """Iterate x = c*T'x + (1-c)*v with scipy, for uniform v and for the core sharing 0.85."""
+    """Iterate x = c*T'x + (1-c)*v with scipy, for uniform v and for the core sharing 0.85 equally."""
     graph = scenario.graph
     n_hosts = len(graph.hosts)
     out_degree = np.bincount(graph.sources, minlength=n_hosts)
