@@ -10,6 +10,7 @@ from collections.abc import Sequence
 from sparkrank.config.sections import SECTIONS, Config, settings_of
 from sparkrank.config.settings import Kind, Setting, checked_value, shown_setting
 from sparkrank.errors import ConfigError
+from sparkrank.places import resolve
 from sparkrank.shown import one_line, shown_value
 
 # Two letters at least, so that no drive letter or one-letter name is read as a scheme.
@@ -124,14 +125,20 @@ def _checked(name: str, declared: Setting, default: object, given: _Given) -> ob
 
 
 def _resolved(name: str, value: str, base: str, local_master: bool) -> str:
-    if not value or _URI.match(value):
+    if not value:
         return value
-    if not os.path.isabs(value) and not local_master:
+    is_uri = _URI.match(value) is not None
+    if not is_uri and not os.path.isabs(value) and not local_master:
         raise ConfigError(
             f'{name}: expected an absolute path or a URI, found "{shown_value(value)}"; '
             "relative paths work with a local master only"
         )
-    return os.path.normpath(os.path.join(base, value))
+    resolved = value if is_uri else os.path.normpath(os.path.join(base, value))
+    try:
+        resolve(resolved)
+    except ConfigError as error:
+        raise ConfigError(f"{name}: {error}") from None
+    return resolved
 
 
 def _check_known(section: str, key: str, where: str) -> None:

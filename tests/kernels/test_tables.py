@@ -1,0 +1,132 @@
+"""Table declarations: columns as agreed, both schemas and the reference made from the one declaration."""
+
+import pyarrow as pa
+import pytest
+
+from sparkrank.tables import (
+    HOST_SCORES,
+    SPAM_CANDIDATES,
+    TABLES,
+    ColumnSpec,
+    ColumnType,
+    TableSpec,
+    arrow_schema,
+    reference_markdown,
+    spark_schema,
+    table_named,
+)
+
+# The agreement with readers of the tables, column by column: name, type, null possible.
+SCORES = [
+    ("domain", "string", True),
+    ("suffix", "string", True),
+    ("in_degree", "long", False),
+    ("out_degree", "long", False),
+    ("pagerank", "double", False),
+    ("scaled_pagerank", "double", False),
+    ("trust", "double", False),
+    ("known_spam_mass", "double", True),
+    ("absolute_mass", "double", False),
+    ("relative_mass", "double", False),
+    ("relative_mass_low", "double", True),
+    ("relative_mass_high", "double", True),
+    ("is_core", "boolean", False),
+    ("core_reached", "boolean", False),
+]
+AGREED = {
+    "host_scores": [("host", "string", False), *SCORES],
+    "spam_candidates": [
+        ("rank", "int", False),
+        ("host", "string", False),
+        ("priority", "double", False),
+        *SCORES,
+        ("cautions", "array<string>", False),
+    ],
+    "rejected_rows": [
+        ("source", "string", False),
+        ("row_value", "string", True),
+        ("reason", "string", False),
+        ("rows", "long", False),
+    ],
+}
+ORDERS = {
+    "host_scores": ("host",),
+    "spam_candidates": ("rank",),
+    "rejected_rows": ("source", "row_value", "reason", "rows"),
+}
+
+
+def test_columns_are_as_agreed() -> None:
+    found = {
+        table.name: [(c.name, c.type.value, c.nullable) for c in table.columns] for table in TABLES.values()
+    }
+    assert found == AGREED
+    assert {table.name: table.order for table in TABLES.values()} == ORDERS
+
+
+@pytest.mark.parametrize("table", TABLES.values(), ids=list(TABLES))
+def test_both_schemas_say_the_same(table: TableSpec) -> None:
+    arrow, spark = arrow_schema(table), spark_schema(table)
+    assert tuple(arrow.names) == tuple(spark.names) == table.column_names
+    # pyspark's own mapping to Arrow is the oracle for types.
+    from pyspark.sql.pandas.types import to_arrow_schema
+
+    mapped = to_arrow_schema(spark)
+    for declared, field, spark_field, oracle in zip(table.columns, arrow, spark.fields, mapped, strict=True):
+        assert field.type == oracle.type
+        assert field.nullable == oracle.nullable == spark_field.nullable == declared.nullable
+        assert field.metadata[b"description"].decode() == declared.description
+        assert field.metadata[b"unit"].decode() == declared.unit
+        assert spark_field.metadata == {"comment": declared.description, "unit": declared.unit}
+
+
+@pytest.mark.parametrize("table", TABLES.values(), ids=list(TABLES))
+def test_every_column_is_explained(table: TableSpec) -> None:
+    assert table.meaning.endswith(".")
+    for column in table.columns:
+        assert column.unit
+        assert column.description.endswith(".")
+        if column.nullable:
+            assert "Null" in column.meaning, "a reader must learn what null stands for"
+
+
+def test_cautions_stand_where_a_person_meets_a_score() -> None:
+    for table in (HOST_SCORES, SPAM_CANDIDATES):
+        assert "A score is a lead, not a verdict" in table.meaning
+        assert "A score is a lead, not a verdict" in table.column("relative_mass").description
+        for name in ("relative_mass", "core_reached"):
+            assert "Unknown is not spam" in table.column(name).description
+    for word in ("spammer", "controlled"):
+        assert word not in reference_markdown()
+
+
+def test_reference_has_every_column() -> None:
+    lines = reference_markdown().splitlines()
+    for table in TABLES.values():
+        assert lines.count(f"### `{table.name}`") == 1
+    rows = [line for line in lines if line.startswith("| `")]
+    assert len(rows) == sum(len(columns) for columns in AGREED.values())
+    assert all(row.replace("\\|", "").count("|") == 6 for row in rows)
+
+
+def test_tables_by_name() -> None:
+    assert table_named("host_scores") is HOST_SCORES
+    with pytest.raises(
+        KeyError, match="expected one of the tables host_scores, spam_candidates, rejected_rows"
+    ):
+        table_named("scores")
+    with pytest.raises(KeyError, match="table host_scores has no column rank"):
+        HOST_SCORES.column("rank")
+
+
+def test_declarations_check_themselves() -> None:
+    column = ColumnSpec(name="a", type=ColumnType.STRING, unit="text", meaning="A.")
+    with pytest.raises(ValueError, match="expected distinct column names"):
+        TableSpec(name="t", meaning="T.", key=("a",), order=("a",), columns=(column, column))
+    for key, order in [(("b",), ("a",)), (("a",), ("b",)), ((), ("a",)), (("a",), ())]:
+        with pytest.raises(ValueError, match="expected key and order of its columns"):
+            TableSpec(name="t", meaning="T.", key=key, order=order, columns=(column,))
+
+
+def test_declarations_need_no_session() -> None:
+    assert isinstance(arrow_schema(HOST_SCORES), pa.Schema)
