@@ -132,7 +132,9 @@ def _read(kind: str, place: Place, node: str, rules: SuffixSplit) -> HostList:
         if host is None:
             rejected.append((entry.host, reason))
             continue
-        sliced = dataclasses.replace(entry, slice=entry.slice or rules.split(host)[0] or NO_SUFFIX)
+        sliced = entry
+        if entry.slice is None:
+            sliced = dataclasses.replace(entry, slice=rules.split(host)[0] or NO_SUFFIX)
         earlier = kept.setdefault(host, sliced)
         if earlier.slice != sliced.slice:
             raise InputRefused(
