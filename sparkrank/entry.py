@@ -22,7 +22,7 @@ from sparkrank.places import Place, resolve
 from sparkrank.publish.attempts import RunFolder, new_attempt_id, utc_now
 from sparkrank.publish.lock import hold_run
 from sparkrank.publish.outcome import Outcome, write_outcome
-from sparkrank.session import check_runtime, master_is_local, open_session
+from sparkrank.session import check_runtime, master_is_local, open_session, print_error
 from sparkrank.shown import one_line
 
 if TYPE_CHECKING:
@@ -119,9 +119,9 @@ def run_job(
     else:
         message, status = _report(job, known, status, message, details)
     if message:
-        print(f"sparkrank: {message}", file=sys.stderr)
+        print_error(f"sparkrank: {message}")
     if details and debug:
-        print(details, file=sys.stderr)
+        print_error(details)
     return status
 
 
@@ -184,8 +184,8 @@ def _logging(*, quiet: bool, debug: bool) -> Iterator[None]:
 
 def _open_run(config: Config) -> _Known:
     """The run's output, made and reached; ConfigError if it cannot be."""
-    output = resolve(config.run.output)
-    resolve(config.run.work)
+    output = _resolve_setting("run.output", config.run.output)
+    _resolve_setting("run.work", config.run.work)
     try:
         output.make_dir()
         output.child("outcomes").make_dir()
@@ -196,6 +196,13 @@ def _open_run(config: Config) -> _Known:
             "choose another one or its permissions"
         ) from error
     return _Known(config=config, output=output, attempt_id=new_attempt_id(), started_at=utc_now())
+
+
+def _resolve_setting(name: str, value: str) -> Place:
+    try:
+        return resolve(value)
+    except ConfigError as error:
+        raise ConfigError(f"{name}: {error}") from None
 
 
 def _run(

@@ -216,3 +216,24 @@ def _check_heap(session: "SparkSession") -> None:
             "add --driver-memory 4g to spark-submit",
             heap // _MIB,
         )
+
+
+def print_error(line: str) -> None:
+    """Print a line on the standard error that the user sees.
+
+    spark-submit sends a Python driver's standard error to its own standard output; under it the line goes
+    through the JVM, whose standard error is the user's.
+    """
+    if under_submit():
+        try:
+            from pyspark import SparkContext
+
+            SparkContext._ensure_initialized()
+            jvm = SparkContext._jvm
+            assert jvm is not None  # initialised just before
+            jvm.java.lang.System.err.println(line)
+        except Exception as error:  # a JVM that is gone must not cost the line
+            _log.debug("the line does not reach the JVM: %s", error)
+        else:
+            return
+    print(line, file=sys.stderr)
