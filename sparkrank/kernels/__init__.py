@@ -1,0 +1,12 @@
+"""Array arithmetic of the program: numpy only, arrays in and arrays out, no files, no globals.
+
+Read in the order of the data flow:
+
+- ``lookup``: hashed ids to positions in a sorted stripe
+- ``edges``: packed edge keys of one tile: sort, merge duplicates, degrees
+- ``peel``: which hosts a peel round takes away
+- ``diagonals``: one sub-block of edges in jagged diagonal storage
+- ``accumulate``: the multiplication, k columns at once
+- ``mass``: absolute and relative spam mass, and its range over the core's slices
+- ``farms``: closed forms of farm arithmetic
+"""

@@ -1,0 +1,74 @@
+"""Numpy tasks over work files, scheduled by Spark.
+
+Spark places, retries and counts the tasks; the data stays in files.  A task takes its number, reads
+and writes work files, and returns a small report.  The reports come back in task order, so that
+whatever the driver adds up, it adds in the same order every time.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterable, Iterator
+from typing import TYPE_CHECKING, Any
+
+from sparkrank.errors import SparkrankError
+
+if TYPE_CHECKING:
+    from pyspark import RDD
+    from pyspark.sql import SparkSession
+
+Report = Any
+Task = Callable[[int], Report]
+
+
+class TaskRunner:
+    """Runs tasks 0 … n-1, each in a Spark partition of its own.
+
+    The partitions belong to one persisted, tiny RDD.  Where its pieces are cached tells Spark where a
+    task ran last, so that it runs there again, beside the files in that machine's page cache.  Losing
+    the pieces costs time, never correctness.
+    """
+
+    def __init__(self, spark: SparkSession, n_tasks: int) -> None:
+        self._spark = spark
+        self.n_tasks = n_tasks
+        self._anchor: RDD[int] = spark.sparkContext.parallelize(range(n_tasks), n_tasks)
+        self._anchor = self._anchor.mapPartitions(_same).persist()
+
+    def run(self, task: Task, what: str) -> list[Report]:
+        """The reports of all tasks in task order; ``what`` names the step in Spark's pages and errors."""
+        self._spark.sparkContext.setJobDescription(what)
+        try:
+            return self._anchor.mapPartitions(_NamedTask(task, what)).collect()
+        finally:
+            self._spark.sparkContext.setJobDescription(None)  # type: ignore[arg-type]
+
+    def close(self) -> None:
+        """Gives the cached pieces back."""
+        self._anchor.unpersist()
+
+    def __enter__(self) -> TaskRunner:
+        return self
+
+    def __exit__(self, *_: object) -> None:
+        self.close()
+
+
+def _same(numbers: Iterable[int]) -> Iterator[int]:
+    return iter(numbers)
+
+
+class _NamedTask:
+    """A task whose failure says which step and which number it was."""
+
+    def __init__(self, task: Task, what: str) -> None:
+        self._task = task
+        self._what = what
+
+    def __call__(self, numbers: Iterable[int]) -> Iterator[Report]:
+        for number in numbers:
+            try:
+                yield self._task(number)
+            except Exception as error:
+                raise SparkrankError(
+                    f"{self._what}, task {number}: {type(error).__name__}: {error}"
+                ) from error
