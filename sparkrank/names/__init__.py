@@ -1,0 +1,5 @@
+"""From what a row says to the one name of a host, its public suffix and its registrable domain.
+
+In the order of the flow: `native` decides plain values inside Spark, `canonical` (over `addresses` and
+`idn`) the odd ones, `suffixes` splits the canonical hosts.
+"""

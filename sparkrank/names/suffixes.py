@@ -1,0 +1,194 @@
+"""Public suffixes and registrable domains, by the Public Suffix List.
+
+A host's public suffix is set by the longest rule that matches it, an exception rule before all others;
+without a rule it is the last label. Its registrable domain is the suffix and one label more.
+`*.kobe.jp` makes `kobe.jp` itself a suffix too, as the list's own tests have it.
+
+Source: publicsuffix.org/list, "Format" and "Algorithm"; the list is that of the `publicsuffixlist` package.
+"""
+
+import hashlib
+from collections.abc import Iterable, Sequence
+from dataclasses import dataclass
+from functools import cached_property
+from pathlib import Path
+from typing import Literal
+
+import publicsuffixlist
+import pyarrow as pa
+from pyspark.sql import Column, DataFrame
+from pyspark.sql import functions as sf
+
+from sparkrank.errors import ConfigError
+from sparkrank.names.addresses import ends_in_number, is_dotted_ipv4
+from sparkrank.names.canonical import canonical_host
+from sparkrank.names.idn import domain_to_ascii
+
+SuffixSections = Literal["icann", "icann+private"]
+
+_BEGIN, _END = "// ===BEGIN ", "// ===END "
+_EXTRA = "names.extra_suffixes"
+
+
+@dataclass(frozen=True, kw_only=True)
+class SuffixRules:
+    """The rules in force, each keyed by its name in ASCII.
+
+    `suffix_labels[name]` is the number of labels of the public suffix of the hosts that are `name` or end
+    in it, unless a longer name matches: the name's own number for a plain rule, one more for a wildcard
+    below it (cut at the host's own number), one less for an exception.
+    """
+
+    suffix_labels: dict[str, int]
+
+    @classmethod
+    def load(cls, sections: SuffixSections = "icann+private", extra: Sequence[str] = ()) -> "SuffixRules":
+        """The package's rules of these sections, and extra rules in the list's own notation.
+
+        Raises ConfigError naming `names.extra_suffixes[i]` for a rule that cannot be used.
+        """
+        return cls.of_rules([*_listed_rules(sections), *_extra_rules(extra)])
+
+    @classmethod
+    def of_rules(cls, rules: Iterable[str]) -> "SuffixRules":
+        """Rules in lower-case ASCII; of rules with one name an exception counts first, then a wildcard."""
+        labels: dict[str, int] = {}
+        for rule in sorted(set(rules), key=lambda rule: ("*!".find(rule[0]), rule)):
+            name = rule.lstrip("!").removeprefix("*.")
+            depth = name.count(".") + 1
+            labels[name] = depth - 1 if rule[0] == "!" else depth + 1 if rule[0] == "*" else depth
+        return cls(suffix_labels=labels)
+
+    @cached_property
+    def fingerprint(self) -> str:
+        """SHA-256 (hexadecimal) of the rules; equal for equal rules, however they were put together."""
+        lines = "".join(f"{name} {labels}\n" for name, labels in sorted(self.suffix_labels.items()))
+        return hashlib.sha256(lines.encode("ascii")).hexdigest()
+
+    def split(self, host: str) -> tuple[str | None, str | None]:
+        """Public suffix and registrable domain of a canonical host.
+
+        Both are None for an IP address and for a name with an empty label; the domain is None for a host
+        that is a public suffix itself.
+        """
+        labels = host.split(".")
+        if host.startswith("[") or is_dotted_ipv4(host) or "" in labels:
+            return None, None
+        count = 1
+        for start in range(len(labels)):
+            found = self.suffix_labels.get(".".join(labels[start:]))
+            if found is not None:
+                count = min(found, len(labels))
+                break
+        suffix = ".".join(labels[-count:])
+        return suffix, ".".join(labels[-count - 1 :]) if count < len(labels) else None
+
+
+def _listed_rules(sections: SuffixSections) -> list[str]:
+    wanted = {"ICANN", "PRIVATE"} if sections == "icann+private" else {"ICANN"}
+    rules: list[str] = []
+    section = ""
+    for line in Path(publicsuffixlist.PSLFILE).read_text(encoding="utf-8").splitlines():
+        if line.startswith(_BEGIN):
+            section = line.removeprefix(_BEGIN).split(" ")[0]
+        elif line.startswith(_END):
+            section = ""
+        elif line.strip() and not line.startswith("//") and section in wanted:
+            rules.append(_ascii_rule(line.split()[0]))
+    return rules
+
+
+def _ascii_rule(rule: str) -> str:
+    prefix = rule[: 1 if rule.startswith("!") else 2 if rule.startswith("*.") else 0]
+    name = domain_to_ascii(rule[len(prefix) :])
+    if name is None:
+        raise ValueError(f"public suffix rule without an ASCII form: {rule!r}")
+    return prefix + name
+
+
+def _extra_rules(extra: Sequence[str]) -> list[str]:
+    return [_extra_rule(rule, f"{_EXTRA}[{position}]") for position, rule in enumerate(extra)]
+
+
+def _extra_rule(rule: str, where: str) -> str:
+    prefix = rule[: 1 if rule.startswith("!") else 2 if rule.startswith("*.") else 0]
+    name = rule[len(prefix) :]
+    # A rule's name obeys the rules of a bare host, without port, path or trailing dot.
+    host = canonical_host(name).host
+    if host is None or any(char in name for char in ":/*![") or ends_in_number(host):
+        raise ConfigError(
+            f"{where}: expected a public suffix rule such as 'pages.example', '*.example' or "
+            f"'!www.example', found {rule!r}; correct or remove it"
+        )
+    if prefix == "!" and "." not in host:
+        raise ConfigError(f"{where}: expected an exception of two labels or more, found {rule!r}; remove it")
+    return prefix + host
+
+
+def with_suffix_and_domain(frame: DataFrame, host_column: str, rules: SuffixRules) -> DataFrame:
+    """Add `suffix` and `domain` (strings, null as in `SuffixRules.split`) of canonical hosts to a frame.
+
+    One broadcast join a rule length: the names of L labels are joined on the host's last L labels, and the
+    longest match wins. Beyond two labels the key is null, and costs nothing, unless the last two labels
+    have longer names below them.
+    """
+    host = sf.col(host_column)
+    # Counting dots by length is several times cheaper than splitting.
+    labels = sf.octet_length(host) - sf.octet_length(sf.replace(host, sf.lit("."), sf.lit(""))) + 1
+    is_name = ~(host.startswith("[") | _is_ipv4(host) | _has_empty_label(host))
+    joined = frame
+    found: list[Column] = []
+    for depth, table in _tables_by_depth(frame, rules):
+        key = sf.substring_index(host, ".", -depth)
+        if depth > 2:
+            key = sf.when(sf.col("_suffix_longer_2"), key)
+        joined = joined.join(sf.broadcast(table), key == sf.col(f"_suffix_name_{depth}"), "left")
+        found.insert(0, sf.col(f"_suffix_labels_{depth}"))
+    count = sf.when(is_name, sf.least(sf.coalesce(*found, sf.lit(1)), labels))
+    kept = [sf.col(name) for name in frame.columns]
+    counted = joined.select(*kept, labels.alias("_labels"), count.alias("_suffix_labels"))
+    has_more = sf.col("_suffix_labels") < sf.col("_labels")
+    return counted.select(
+        *kept,
+        _last_labels(host, sf.col("_suffix_labels")).alias("suffix"),
+        sf.when(has_more, _last_labels(host, sf.col("_suffix_labels") + 1)).alias("domain"),
+    )
+
+
+def _is_ipv4(host: Column) -> Column:
+    # In a canonical host only an address ends in a number. Few names get as far as the pattern.
+    last = sf.substring_index(host, ".", -1)
+    return (last < sf.lit(":")) & last.rlike(r"\A[0-9]+\z")
+
+
+def _has_empty_label(host: Column) -> Column:
+    return host.startswith(".") | host.endswith(".") | sf.contains(host, sf.lit(".."))
+
+
+def _last_labels(host: Column, count: Column) -> Column:
+    # The Python function of this name takes no column for the count.
+    return sf.call_function("substring_index", host, sf.lit("."), -count)
+
+
+def _tables_by_depth(frame: DataFrame, rules: SuffixRules) -> list[tuple[int, DataFrame]]:
+    """Tables of the names of L labels, L ascending. Plain rules of one label say what holds without them."""
+    depths: dict[int, dict[str, int]] = {}
+    for name, labels in sorted(rules.suffix_labels.items()):
+        depth = name.count(".") + 1
+        if (depth, labels) != (1, 1):
+            depths.setdefault(depth, {})[name] = labels
+    longer = {
+        ".".join(name.split(".")[-2:]) for depth, names in depths.items() if depth > 2 for name in names
+    }
+    if longer:
+        depths.setdefault(2, {})
+    tables: list[tuple[int, DataFrame]] = []
+    for depth in sorted(depths):
+        columns: dict[str, pa.Array] = {}
+        names = sorted({*depths[depth], *longer}) if depth == 2 else sorted(depths[depth])
+        columns[f"_suffix_name_{depth}"] = pa.array(names, pa.string())
+        columns[f"_suffix_labels_{depth}"] = pa.array([depths[depth].get(name) for name in names], pa.int32())
+        if depth == 2:
+            columns["_suffix_longer_2"] = pa.array([name in longer for name in names], pa.bool_())
+        tables.append((depth, frame.sparkSession.createDataFrame(pa.table(columns))))
+    return tables
