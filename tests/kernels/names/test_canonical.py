@@ -5,7 +5,7 @@ import string
 from pathlib import Path
 
 import pytest
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from sparkrank.names.canonical import REASONS, canonical_host
@@ -186,6 +186,7 @@ hostish = st.text(
 )
 
 
+@settings(deadline=None)  # the first example loads the IDNA tables
 @given(st.one_of(st.text(), hostish, hostish.map("http://".__add__), hostish.map("sc://".__add__)))
 def test_a_canonical_host_names_itself(value: str) -> None:
     host = canonical_host(value).host
