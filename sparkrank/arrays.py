@@ -89,7 +89,7 @@ def _file_pieces(arrays: Mapping[str, NDArray[Any]]) -> list[memoryview]:
         header[name] = {"dtype": data.dtype.str, "shape": list(data.shape), "offset": offset}
         padding = -data.nbytes % _ALIGNMENT_BYTES
         if data.nbytes:
-            body.append(memoryview(data).cast("B"))
+            body.append(data.data.cast("B"))
         body.append(memoryview(bytes(padding)))
         offset += data.nbytes + padding
     text = json.dumps(header).encode()
@@ -127,5 +127,6 @@ def _parse(buffer: mmap.mmap | bytes, shown: str) -> dict[str, NDArray[Any]]:
         }
     except ValueError as error:
         raise SparkrankError(
-            f"{shown}: expected a whole work file, found {len(buffer)} bytes ({error}); remove the work folder"
+            f"{shown}: expected a whole work file, found {len(buffer)} bytes ({error}); "
+            "remove the work folder"
         ) from error

@@ -17,11 +17,11 @@ from sparkrank.graph.hosts import write_hosts
 from sparkrank.graph.peeling import Peeling
 from sparkrank.graph.plan import GridPlan, plan_grid
 from sparkrank.graph.rows import EdgeRows, check_rejected_share
-from sparkrank.tasks import TaskRunner
 from sparkrank.graph.tiles import write_tiles
 from sparkrank.inputs import InputFacts
 from sparkrank.names.suffixes import SuffixRules
 from sparkrank.places import Place
+from sparkrank.tasks import TaskRunner
 
 if TYPE_CHECKING:
     from pyspark.sql import SparkSession
@@ -142,7 +142,8 @@ class _Builder:
         )
         if not tiles["edges"]:
             raise InputRefused(
-                f"input.edges: expected links between different hosts, found none in {self.edges.rows:,} rows "
+                f"input.edges: expected links between different hosts, found none in "
+                f"{self.edges.rows:,} rows "
                 f"({names['rejected_rows']:,} rejected, {tiles['self_links']:,} self-links, the rest not "
                 "followed); check the columns src, dst and rel"
             )

@@ -208,4 +208,4 @@ def read_cell(place: Place, to_phase: int) -> Iterator[PlacedSection]:
             diagonals=arrays["diagonals"][row["diagonals_at"] : row["diagonals_at"] + row["n_diagonals"]],
             long_starts=arrays["long_starts"][row["long_at"] : row["long_at"] + row["n_long"]],
         )
-        yield PlacedSection(*values[:5], section)
+        yield PlacedSection._make([*values[:5], section])

@@ -32,17 +32,17 @@ _NAME_ROWS = 1 << 17  # rows a Parquet row group of names: some MB
 
 def id_of(host: Column, salt: int) -> Column:
     """The 64-bit id of a canonical host under a salt."""
-    from pyspark.sql import functions as F
+    from pyspark.sql import functions as sf
 
-    return F.xxhash64(F.lit(salt), host)
+    return sf.xxhash64(sf.lit(salt), host)
 
 
 def stripe_of(host_id: Column, n_stripes: int) -> Column:
     """The stripe of an id: its upper 32 bits scaled to the number of stripes."""
-    from pyspark.sql import functions as F
+    from pyspark.sql import functions as sf
 
-    upper = F.shiftright(host_id, 32) + F.lit(1 << 31)
-    return F.shiftright(upper * F.lit(n_stripes), 32).cast("int")
+    upper = sf.shiftright(host_id, 32) + sf.lit(1 << 31)
+    return sf.shiftright(upper * sf.lit(n_stripes), 32).cast("int")
 
 
 def write_hosts(hosts: DataFrame, folder: GraphFolder, plan: GridPlan) -> dict[str, Any]:
@@ -56,15 +56,15 @@ def write_hosts(hosts: DataFrame, folder: GraphFolder, plan: GridPlan) -> dict[s
     -------
     The stage's record: ``salt``, ``stripe_hosts`` (hosts of each stripe) and ``hosts`` (their number).
     """
-    from pyspark.sql import functions as F
+    from pyspark.sql import functions as sf
 
     salt = 0
     for attempt in range(_TRIES):
-        host_id = id_of(F.col("host"), salt)
+        host_id = id_of(sf.col("host"), salt)
         rows = hosts.select(host_id.alias("id"), "host")
         writer = _StripeWriter(folder)
         reports = write_partitions(
-            rows, plan.stripes, stripe_of(F.col("id"), plan.stripes), writer, "hosts into stripes"
+            rows, plan.stripes, stripe_of(sf.col("id"), plan.stripes), writer, "hosts into stripes"
         )
         clashes = sum(report["clashes"] for report in reports.values())
         if not clashes:

@@ -16,9 +16,9 @@ from sparkrank.arrays import read_arrays, write_arrays
 from sparkrank.errors import SparkrankError
 from sparkrank.graph.folder import GraphFolder
 from sparkrank.graph.plan import GridPlan
-from sparkrank.tasks import TaskRunner
 from sparkrank.kernels import peel
 from sparkrank.kernels.edges import destinations, sources
+from sparkrank.tasks import TaskRunner
 
 log = logging.getLogger(__name__)
 

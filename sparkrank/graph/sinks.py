@@ -31,14 +31,14 @@ def write_partitions(
     Returns the reports by partition; a partition without rows runs no writer and has no report.
     ``what`` names the step in errors.
     """
-    from pyspark.sql import functions as F
+    from pyspark.sql import functions as sf
 
     columns = rows.columns
     sink = _make_sink(writer, what)
     reports = (
         rows.repartitionById(n_partitions, partition)
-        .select(sink(*[F.col(name) for name in columns]).alias("report"))
-        .where(F.col("report").isNotNull())
+        .select(sink(*[sf.col(name) for name in columns]).alias("report"))
+        .where(sf.col("report").isNotNull())
         .collect()
     )
     by_partition = {}
@@ -49,7 +49,7 @@ def write_partitions(
 
 
 def _make_sink(writer: Writer, what: str) -> Callable[..., Column]:
-    from pyspark.sql.functions import arrow_udf
+    from pyspark.sql import functions as sf
 
     def sink(batches: Iterator[tuple[pa.Array, ...]]) -> Iterator[pa.Array]:
         from pyspark import TaskContext
@@ -79,5 +79,5 @@ def _make_sink(writer: Writer, what: str) -> Callable[..., Column]:
     # The annotations say iterator-of-tuples to Spark; a local class keeps them literal.
     sink.__annotations__ = {"batches": Iterator[tuple[pa.Array, ...]], "return": Iterator[pa.Array]}
     # Not deterministic in Spark's sense: the optimizer must not evaluate a writing task twice.
-    made: Callable[..., Column] = arrow_udf(sink, "string").asNondeterministic()  # type: ignore[call-overload]
+    made: Callable[..., Column] = sf.arrow_udf(sink, "string").asNondeterministic()  # type: ignore[attr-defined]
     return made

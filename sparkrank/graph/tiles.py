@@ -42,15 +42,15 @@ def write_tiles(
     The stage's record: ``tiles`` ([stripe, group] of those with edges), ``edges`` (distinct, without
     self-links), ``self_links`` and ``duplicates`` (rows).
     """
-    from pyspark.sql import functions as F
+    from pyspark.sql import functions as sf
 
-    columns = [id_of(F.col("src"), salt).alias("src"), id_of(F.col("dst"), salt).alias("dst")]
+    columns = [id_of(sf.col("src"), salt).alias("src"), id_of(sf.col("dst"), salt).alias("dst")]
     if weighted:
-        columns.append(F.col("links"))
+        columns.append(sf.col("links"))
     rows = edges.select(*columns)
     tile = (
-        stripe_of(F.col("dst"), plan.stripes) * plan.build_groups
-        + F.floor(stripe_of(F.col("src"), plan.stripes) * plan.build_groups / plan.stripes)
+        stripe_of(sf.col("dst"), plan.stripes) * plan.build_groups
+        + sf.floor(stripe_of(sf.col("src"), plan.stripes) * plan.build_groups / plan.stripes)
     ).cast("int")
     n_tiles = plan.stripes * plan.build_groups
     reports = write_partitions(rows, n_tiles, tile, _TileWriter(folder, plan, weighted), "edges into tiles")

@@ -43,17 +43,17 @@ class Members:
 
 def match_lists(spark: SparkSession, graph: Graph, folder: SolveFolder, lists: HostLists) -> Members:
     """Finds the lists' hosts in the graph and writes the stripes' member files."""
-    from pyspark.sql import functions as F
+    from pyspark.sql import functions as sf
 
     tables = [_entries(lists.core, lambda row: row)]
     if lists.known_spam is not None:
         tables.append(_entries(lists.known_spam, lambda row: -1 - row))
     rows = spark.createDataFrame(pa.concat_tables(tables)).select(
-        id_of(F.col("host"), graph.salt).alias("id"), "entry", "host"
+        id_of(sf.col("host"), graph.salt).alias("id"), "entry", "host"
     )
     n_stripes = graph.plan.stripes
     write_partitions(
-        rows, n_stripes, stripe_of(F.col("id"), n_stripes), _MemberWriter(graph, folder), "list entries"
+        rows, n_stripes, stripe_of(sf.col("id"), n_stripes), _MemberWriter(graph, folder), "list entries"
     )
     found = [_read_entries(folder, stripe) for stripe in range(n_stripes)]
     matched = np.sort(np.concatenate(found)) if found else np.zeros(0, np.int64)

@@ -1,0 +1,67 @@
+"""Hosts over both thresholds, core members excluded, in the order in which to look at them."""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING
+
+from sparkrank.config import Candidates
+from sparkrank.evidence.cautions import CoreStrength, bare_suffixes, caution_column
+
+if TYPE_CHECKING:
+    from pyspark.sql import Column, DataFrame
+
+# Being out of the core's reach is no evidence; such hosts come after reached ones of the same mass.
+_UNREACHED_WEIGHT = 0.5
+
+
+def priority() -> Column:
+    """What the order goes by: relative mass times the decimal logarithm of 1 + absolute mass, halved
+    where the core does not reach; relative mass alone where the absolute one is not positive.
+
+    Absolute mass says how much there is to gain, by its order of magnitude; relative mass how much of
+    the host's score the core leaves unexplained.
+    """
+    from pyspark.sql import functions as sf
+
+    size = sf.log10(sf.lit(1.0) + sf.greatest(sf.col("absolute_mass"), sf.lit(0.0)))
+    reach = sf.when(sf.col("core_reached"), sf.lit(1.0)).otherwise(sf.lit(_UNREACHED_WEIGHT))
+    by_mass = sf.col("relative_mass") * size * reach
+    return sf.when(sf.col("absolute_mass") > 0, by_mass).otherwise(sf.col("relative_mass"))
+
+
+def spam_candidates(scores: DataFrame, thresholds: Candidates, strength: CoreStrength) -> DataFrame:
+    """The table ``spam_candidates`` from the rows of ``host_scores``."""
+    from pyspark.sql import functions as sf
+
+    over = (
+        (sf.col("scaled_pagerank") >= thresholds.min_scaled_pagerank)
+        & (sf.col("relative_mass") >= thresholds.min_relative_mass)
+        & ~sf.col("is_core")
+    )
+    bare = bare_suffixes(scores).withColumn("is_bare", sf.lit(True))
+    chosen = scores.where(over)
+    chosen = chosen.join(sf.broadcast(bare), sf.col("suffix").eqNullSafe(sf.col("bare_suffix")), "left")
+    chosen = chosen.withColumn("is_bare_suffix", sf.coalesce(sf.col("is_bare"), sf.lit(False)))
+    chosen = chosen.withColumn("cautions", caution_column(strength, thresholds.min_relative_mass))
+    chosen = chosen.withColumn("priority", priority()).drop("bare_suffix", "is_bare", "is_bare_suffix")
+    return _ranked(chosen)
+
+
+def _ranked(chosen: DataFrame) -> DataFrame:
+    """Adds ``rank`` from 1 by falling priority, then host, without bringing all rows to one task."""
+    from pyspark.sql import functions as sf
+
+    # Kept, so that both uses below see the same partitions.
+    ordered = chosen.orderBy(sf.col("priority").desc(), "host").withColumn("part", sf.spark_partition_id())
+    ordered = ordered.withColumn("at", sf.monotonically_increasing_id()).persist()
+    counts = ordered.groupBy("part").count().orderBy("part").collect()
+    before, first = 0, {}
+    for row in counts:
+        first[row["part"]] = before
+        before += row["count"]
+    # monotonically_increasing_id is the partition's number shifted by 33 bits, plus the row's.
+    within = sf.col("at") - sf.shiftleft(sf.col("part").cast("long"), 33)
+    pairs = list(first.items()) or [(0, 0)]
+    starts = ordered.sparkSession.createDataFrame(pairs, "part int, first long")
+    ranked = ordered.join(sf.broadcast(starts), "part")
+    return ranked.withColumn("rank", (sf.col("first") + within + 1).cast("int")).drop("part", "at", "first")

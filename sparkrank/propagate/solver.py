@@ -1,0 +1,253 @@
+"""The block power iteration: x = c·T'x + u for all columns at once, step by committed step.
+
+A task sums one cell of the grid: the flow of one group of source stripes into one destination stripe.
+With a single group the task also finishes its stripe; with several, the stripe's owner adds the groups'
+parts in their order.  A step counts once its record is written; the record says what every stripe's
+file must be, so a later run goes on from there.
+"""
+
+from __future__ import annotations
+
+import logging
+import time
+from dataclasses import dataclass
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from sparkrank.arrays import has_arrays, read_arrays, write_arrays
+from sparkrank.errors import NotConverged
+from sparkrank.propagate.layers import BaseTask, Flows, LayerTask, Solve
+from sparkrank.propagate.pull import phase_size, pull
+from sparkrank.tasks import TaskRunner
+
+if TYPE_CHECKING:
+    from pyspark.sql import SparkSession
+
+log = logging.getLogger(__name__)
+
+
+@dataclass(frozen=True, kw_only=True)
+class Solution:
+    """A finished solve.
+
+    ``error_bounds[j]``: no host's column j is further from the exact value than this times the host's
+    PageRank.  ``l1_bounds[j]``: the sum of all hosts' errors, as a share of N·(1-c) teleport.
+    ``pagerank_sum`` is the sum of all hosts' scaled PageRank.
+    """
+
+    solve: Solve
+    steps: int
+    error_bounds: list[float]
+    l1_bounds: list[float]
+    pagerank_sum: float
+    edges_per_step: int
+
+
+def solve_columns(spark: SparkSession, solve: Solve, *, tolerance: float, max_steps: int) -> Solution:
+    """Solves all columns to the tolerance.
+
+    1. source phases, each once
+    2. the core's constant term; its start u
+    3. steps until no host changes by more than the tolerance in any column
+    4. sink phases, each once
+
+    Raises NotConverged where ``max_steps`` steps are too few; the steps done stay committed.
+    """
+    graph = solve.graph
+    if (done := solve.folder.record("solution")) is not None:
+        log.info("solve: done before, %d steps", done["steps"])
+        return Solution(solve=solve, **done)
+    with TaskRunner(spark, graph.plan.stripes) as stripes:
+        first = _prepare(solve, stripes)
+        record = _iterate(spark, solve, stripes, tolerance, max_steps)
+        sums = [*first["layer_sums"], record["pagerank_sum"]]
+        for phase in range(graph.core_phase + 1, graph.n_phases):
+            task = LayerTask(solve, phase, record["step"])
+            sums.append(_sum(stripes.run(task, f"hosts that feed nobody, phase {phase}")))
+    finished = {
+        "steps": record["step"],
+        "error_bounds": record["largest_change"],
+        "l1_bounds": [change / graph.n_hosts for change in record["change_sum"]],
+        "pagerank_sum": _sum(sums),
+        "edges_per_step": record["edges"],
+    }
+    solve.folder.commit("solution", finished)
+    return Solution(solve=solve, **finished)
+
+
+def _prepare(solve: Solve, stripes: TaskRunner) -> dict[str, Any]:
+    """Source phases and the core's constant term; the record holds the phases' PageRank sums."""
+    if (record := solve.folder.record("prepared")) is not None:
+        return record
+    sums = []
+    for phase in range(solve.graph.core_phase):
+        sums.append(_sum(stripes.run(LayerTask(solve, phase, None), f"hosts fed by nobody, phase {phase}")))
+    stripes.run(BaseTask(solve), "constant term")
+    return solve.folder.commit("prepared", {"layer_sums": sums})
+
+
+def _iterate(
+    spark: SparkSession, solve: Solve, stripes: TaskRunner, tolerance: float, max_steps: int
+) -> dict[str, Any]:
+    """Steps until converged; the last step's record."""
+    plan = solve.graph.plan
+    step, record = _last_step(solve)
+    if record is not None:
+        log.info("solve: going on after step %d", step)
+    else:
+        stripes.run(_StartTask(solve), "start")
+    cells = TaskRunner(spark, plan.stripes * plan.solve_groups) if plan.solve_groups > 1 else None
+    try:
+        while record is None or max(record["largest_change"]) > tolerance:
+            if step >= max_steps:
+                raise _not_converged(record, tolerance, max_steps)
+            started = time.monotonic()
+            step += 1
+            if cells is not None:
+                cells.run(_PartialTask(solve, step), f"step {step}: cells")
+            reports = stripes.run(_StepTask(solve, step), f"step {step}")
+            record = solve.folder.commit(f"step-{step:05d}", _step_record(step, reports))
+            solve.folder.drop_step(step - 2)
+            _log_step(record, solve.columns.count, time.monotonic() - started)
+    finally:
+        if cells is not None:
+            cells.close()
+    return record
+
+
+def _last_step(solve: Solve) -> tuple[int, dict[str, Any] | None]:
+    """The last committed step whose files are what its record says, or (0, None)."""
+    step = 0
+    while solve.folder.record(f"step-{step + 1:05d}") is not None:
+        step += 1
+    while step > 0:
+        record = solve.folder.record(f"step-{step:05d}")
+        assert record is not None
+        stamps = enumerate(record["stamps"])
+        if all(has_arrays(solve.folder.state(step, stripe), stamp) for stripe, stamp in stamps):
+            return step, record
+        log.warning("step %d: files are missing or damaged; the step is done again", step)
+        step -= 1
+    return 0, None
+
+
+def _step_record(step: int, reports: list[dict[str, Any]]) -> dict[str, Any]:
+    """Adds the stripes' reports up, in the order of the stripes."""
+    columns = range(len(reports[0]["largest_change"]))
+    return {
+        "step": step,
+        "largest_change": [max(report["largest_change"][j] for report in reports) for j in columns],
+        "change_sum": [_sum([report["change_sum"][j] for report in reports]) for j in columns],
+        "pagerank_sum": _sum([report["pagerank_sum"] for report in reports]),
+        "edges": sum(report["edges"] for report in reports),
+        "stamps": [report["stamp"] for report in reports],
+    }
+
+
+def _log_step(record: dict[str, Any], n_columns: int, seconds: float) -> None:
+    log.info(
+        "step %d: error at most %.1e of PageRank, %.3g million edge-columns/s, %.2f s",
+        record["step"],
+        max(record["largest_change"]),
+        record["edges"] * n_columns / seconds / 1e6,
+        seconds,
+    )
+
+
+def _not_converged(record: dict[str, Any] | None, tolerance: float, max_steps: int) -> NotConverged:
+    found = (
+        "no step" if record is None else f"{max(record['largest_change']):.2g} after step {record['step']}"
+    )
+    return NotConverged(
+        f"solve: expected an error of at most {tolerance:.3g} of PageRank (solve.tolerance) within "
+        f"{max_steps} steps (solve.max_steps), found {found}; allow more steps, "
+        "the steps done are kept, or a larger tolerance"
+    )
+
+
+def _sum(values: list[float]) -> float:
+    """Left to right: the same bits whoever computed the parts."""
+    total = 0.0
+    for value in values:
+        total += value
+    return total
+
+
+@dataclass(frozen=True)
+class _StartTask:
+    """State 0 of one stripe: the flow of u."""
+
+    solve: Solve
+
+    def __call__(self, stripe: int) -> None:
+        core = self.solve.graph.core_phase
+        flow = self.solve.start(stripe, core) * self.solve.flow_per_score(stripe, core)
+        write_arrays(self.solve.folder.state(0, stripe), {"flow": flow})
+
+
+@dataclass(frozen=True)
+class _PartialTask:
+    """One cell of the grid: what a source group sends into a stripe."""
+
+    solve: Solve
+    step: int
+
+    def __call__(self, cell: int) -> None:
+        plan = self.solve.graph.plan
+        stripe, group = divmod(cell, plan.solve_groups)
+        part, n_edges = _core_inflow(self.solve, self.step, stripe, plan.build_groups_of_solve_group(group))
+        place = self.solve.folder.partial(self.step, stripe, group)
+        write_arrays(place, {"part": part, "edges": np.array([n_edges])})
+
+
+@dataclass(frozen=True)
+class _StepTask:
+    """Finishes one stripe of a step; returns its changes, sums and the stamp of its file."""
+
+    solve: Solve
+    step: int
+
+    def __call__(self, stripe: int) -> dict[str, Any]:
+        solve, folder = self.solve, self.solve.folder
+        plan, core = solve.graph.plan, solve.graph.core_phase
+        if plan.solve_groups == 1:
+            inflow, n_edges = _core_inflow(solve, self.step, stripe, range(plan.build_groups))
+        else:
+            inflow, n_edges = self._add_partials(stripe)
+        score = inflow
+        score += read_arrays(folder.base(stripe))["base"]
+        factor = solve.flow_per_score(stripe, core)
+        flow = score * factor
+        before = read_arrays(folder.state(self.step - 1, stripe))["flow"]
+        # The change of the score itself: core hosts have out-links, so no factor is 0.
+        change = np.abs(flow - before)
+        change /= factor
+        stamp = write_arrays(folder.state(self.step, stripe), {"flow": flow})
+        return {
+            "largest_change": [float(column.max(initial=0.0)) for column in change],
+            "change_sum": [float(np.add.reduce(column)) for column in change],
+            "pagerank_sum": float(np.add.reduce(score[0])),
+            "edges": n_edges,
+            "stamp": stamp.as_dict(),
+        }
+
+    def _add_partials(self, stripe: int) -> tuple[NDArray[np.float64], int]:
+        total: NDArray[np.float64] | None = None
+        n_edges = 0
+        for group in range(self.solve.graph.plan.solve_groups):
+            arrays = read_arrays(self.solve.folder.partial(self.step, stripe, group))
+            total = arrays["part"].copy() if total is None else np.add(total, arrays["part"], out=total)
+            n_edges += int(arrays["edges"][0])
+        assert total is not None
+        return total, n_edges
+
+
+def _core_inflow(solve: Solve, step: int, stripe: int, groups: range) -> tuple[NDArray[np.float64], int]:
+    """What the core sends into a stripe's core hosts, and over how many edges."""
+    core = solve.graph.core_phase
+    inflow = np.zeros((solve.columns.count, phase_size(solve.graph, stripe, core)))
+    flows = Flows(solve, step - 1)
+    n_edges = pull(solve.graph, stripe, core, range(core, core + 1), groups, flows, inflow)
+    return inflow, n_edges

@@ -1,0 +1,1 @@
+"""Solved columns → scores and spam mass, one row a host: the table ``host_scores``."""

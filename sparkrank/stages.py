@@ -1,0 +1,245 @@
+"""The stages of a run as the jobs call them: check, build, score, rank, conclude.
+
+A stage adopts the record of the same stage from an earlier attempt if it was made from the same
+things; else it does the work and commits a record of its own.
+"""
+
+from __future__ import annotations
+
+import hashlib
+import json
+import logging
+import time
+from dataclasses import dataclass
+from typing import TYPE_CHECKING, Any, cast
+
+from sparkrank import __version__
+from sparkrank.config import Config
+from sparkrank.entry import JobContext
+from sparkrank.errors import InputRefused
+from sparkrank.evidence.candidates import spam_candidates
+from sparkrank.evidence.cautions import CoreStrength, core_strength
+from sparkrank.graph.build import Graph, build_graph
+from sparkrank.inputs import InputFacts, check_edges, check_hosts
+from sparkrank.names.lists import HostLists, read_lists
+from sparkrank.names.suffixes import SuffixRules, SuffixSections
+from sparkrank.places import resolve
+from sparkrank.propagate.solve import SolvedHosts, solve_hosts
+from sparkrank.publish.clean import remove_unnamed
+from sparkrank.publish.manifest import Manifest, check_run, write_manifest
+from sparkrank.publish.records import StepRecord, adopt, commit_step, missing_file
+from sparkrank.publish.write import publish_table
+from sparkrank.scores.host_scores import host_scores
+from sparkrank.tables import HOST_SCORES, REJECTED_ROWS, SPAM_CANDIDATES
+
+if TYPE_CHECKING:
+    from pyspark.sql import DataFrame
+
+log = logging.getLogger(__name__)
+
+
+@dataclass(frozen=True, kw_only=True)
+class RunInputs:
+    """What a run reads, checked and read as far as is possible without Spark."""
+
+    config: Config
+    edges: InputFacts
+    hosts: InputFacts | None
+    lists: HostLists
+    rules: SuffixRules
+
+    @classmethod
+    def check(cls, config: Config) -> RunInputs:
+        """Checks every local input; InputRefused or ConfigError by name."""
+        sections = cast(SuffixSections, config.names.suffix_sections)
+        rules = SuffixRules.load(sections, config.names.extra_suffixes)
+        edges = check_edges(config.input.edges)
+        hosts = check_hosts(config.input.hosts) if config.input.hosts else None
+        lists = read_lists(config, rules)
+        return cls(config=config, edges=edges, hosts=hosts, lists=lists, rules=rules)
+
+    def fingerprint(self, *sections: str) -> str:
+        """SHA-256 over the inputs, the version, and the named sections of the configuration."""
+        known = self.lists.known_spam
+        settings = self.config.as_dict()
+        parts = {
+            "version": __version__,
+            "edges": self.edges.fingerprint,
+            "hosts": self.hosts.fingerprint if self.hosts else None,
+            "core": self.lists.core.fingerprint,
+            "known_spam": known.fingerprint if known else None,
+            "suffixes": self.rules.fingerprint,
+            **{section: settings[section] for section in sections},
+        }
+        return hashlib.sha256(json.dumps(parts, sort_keys=True).encode()).hexdigest()
+
+    @property
+    def run_fingerprint(self) -> str:
+        return self.fingerprint("names", "graph", "solve", "mass", "candidates")
+
+
+class InputCheck:
+    """The check of a job's inputs before Java starts; keeps what it read for the job's stages."""
+
+    def __init__(self) -> None:
+        self._checked: RunInputs | None = None
+
+    def __call__(self, config: Config) -> None:
+        self._checked = RunInputs.check(config)
+
+    @property
+    def checked(self) -> RunInputs:
+        """What the check read; it has run by the time a job's body does."""
+        assert self._checked is not None
+        return self._checked
+
+
+def open_run(context: JobContext, inputs: RunInputs) -> Manifest | None:
+    """The finished run if it is whole and was made from the same; None where there is work to do.
+
+    RunConflict where the run was made from something else and is not to be replaced.
+    """
+    run = context.run
+    found = check_run(run.output, run.run_id, inputs.run_fingerprint, replace=context.replace)
+    if found is None or found.fingerprint != inputs.run_fingerprint:
+        remove_unnamed(run)
+        return None
+    if missing := missing_file(run.output, found.tables):
+        log.warning("run %s: %s is missing or has another size; made again", run.run_id, missing)
+        return None
+    log.info("run %s is complete and unchanged: nothing to do", run.run_id)
+    return found
+
+
+def build(context: JobContext, inputs: RunInputs) -> Graph:
+    """The graph of the run, built or recognised."""
+    for caution in inputs.edges.cautions:
+        log.warning("%s", caution)
+    work = resolve(context.config.run.work)
+    graph = build_graph(context.spark, context.config, work, inputs.edges, inputs.hosts, inputs.rules)
+    counts = graph.counts
+    log.info(
+        "graph: %s hosts, %s edges; %s rows rejected, %s not followed, %s self-links, %s merged; "
+        "%s hosts iterate",
+        *(f"{counts[name]:,}" for name in ("hosts", "edges", "rejected_rows", "not_followed_rows")),
+        *(f"{counts[name]:,}" for name in ("self_link_rows", "merged_rows", "iterated_hosts")),
+    )
+    return graph
+
+
+def score(context: JobContext, inputs: RunInputs) -> StepRecord:
+    """Publishes ``host_scores`` and ``rejected_rows``."""
+    fingerprint = inputs.fingerprint("names", "graph", "solve", "mass")
+    if (record := adopt(context.run, "score_hosts", fingerprint)) is not None:
+        log.info("scores: done before")
+        return record
+    graph = build(context, inputs)
+    started = time.monotonic()
+    solved = solve_hosts(context.spark, context.config, graph, inputs.lists)
+    scores = host_scores(context.spark, solved.solution, solved.sweeps, inputs.rules)
+    tables = {
+        "host_scores": publish_table(scores, HOST_SCORES, context.run),
+        "rejected_rows": publish_table(_rejected(context, graph, inputs, solved), REJECTED_ROWS, context.run),
+    }
+    log.info("scores: %.1f s", time.monotonic() - started)
+    facts = {"graph": graph.counts, "core": solved.core_facts(), "columns": solved.column_facts()}
+    record = StepRecord(step="score_hosts", fingerprint=fingerprint, tables=tables, facts=facts)
+    commit_step(context.run, record)
+    return record
+
+
+def scored_before(context: JobContext, inputs: RunInputs) -> StepRecord:
+    """The record of ``score_hosts`` for these inputs; InputRefused where it has not run."""
+    record = adopt(context.run, "score_hosts", inputs.fingerprint("names", "graph", "solve", "mass"))
+    if record is None:
+        raise InputRefused(
+            f"run {context.run.run_id}: expected the scores of score_hosts for this configuration and these "
+            f"inputs below {context.run.output}, found none; run jobs/score_hosts.py or jobs/run_pipeline.py"
+        )
+    return record
+
+
+def rank(context: JobContext, inputs: RunInputs, scored: StepRecord) -> StepRecord:
+    """Publishes ``spam_candidates``."""
+    fingerprint = inputs.run_fingerprint
+    if (record := adopt(context.run, "rank_candidates", fingerprint)) is not None:
+        log.info("candidates: done before")
+        return record
+    strength = _strength(context.config, scored)
+    paths = [context.run.output.below(file.path).uri for file in scored.tables["host_scores"].files]
+    candidates = spam_candidates(context.spark.read.parquet(*paths), context.config.candidates, strength)
+    table = publish_table(candidates, SPAM_CANDIDATES, context.run)
+    candidates.sparkSession.catalog.clearCache()
+    record = StepRecord(
+        step="rank_candidates",
+        fingerprint=fingerprint,
+        tables={"spam_candidates": table},
+        facts={
+            "core_start": strength.start,
+            "boosters_hidden_by_core_link": strength.hidden_boosters,
+            "cautions": strength.cautions,
+        },
+    )
+    commit_step(context.run, record)
+    return record
+
+
+def conclude(context: JobContext, inputs: RunInputs, scored: StepRecord, ranked: StepRecord) -> Manifest:
+    """Writes the manifest, which makes the run count, and removes what it replaces."""
+    known = inputs.lists.known_spam
+    core = inputs.lists.core
+    manifest = Manifest(
+        run_id=context.run.run_id,
+        attempt=context.run.attempt_id,
+        status="complete",
+        fingerprint=inputs.run_fingerprint,
+        tables={**scored.tables, **ranked.tables},
+        details={
+            "version": __version__,
+            "config": context.config.as_dict(),
+            "inputs": {
+                "edges": {"fingerprint": inputs.edges.fingerprint, "rows": inputs.edges.rows},
+                "hosts": _facts(inputs.hosts),
+                "core": {"fingerprint": core.fingerprint, "rows": core.rows},
+                "known_spam": known and {"fingerprint": known.fingerprint, "rows": known.rows},
+            },
+            "graph": scored.facts["graph"],
+            "core": {**scored.facts["core"], **ranked.facts},
+            "columns": scored.facts["columns"],
+        },
+    )
+    written = write_manifest(context.run, manifest)
+    remove_unnamed(context.run)
+    log.info(
+        "run %s: %s candidates of %s hosts",
+        written.run_id,
+        *(f"{written.tables[name].rows:,}" for name in ("spam_candidates", "host_scores")),
+    )
+    return written
+
+
+def _facts(facts: InputFacts | None) -> dict[str, Any] | None:
+    return None if facts is None else {"fingerprint": facts.fingerprint, "rows": facts.rows}
+
+
+def _strength(config: Config, scored: StepRecord) -> CoreStrength:
+    return core_strength(
+        good_share=config.mass.good_share,
+        n_hosts=scored.facts["graph"]["hosts"],
+        n_core=scored.facts["core"]["matched"],
+        slices=len(scored.facts["core"]["slices"]),
+        damping=config.solve.damping,
+        min_relative_mass=config.candidates.min_relative_mass,
+    )
+
+
+def _rejected(context: JobContext, graph: Graph, inputs: RunInputs, solved: SolvedHosts) -> DataFrame:
+    """Rejected values of the tables and of the lists."""
+    from sparkrank.tables import spark_schema
+
+    lists = [inputs.lists.core, *filter(None, [inputs.lists.known_spam])]
+    rejections = [r for one in lists for r in one.rejections] + list(solved.members.unmatched)
+    rows = [(r.source, r.row_value, r.reason, r.rows) for r in rejections]
+    from_lists = context.spark.createDataFrame(rows, spark_schema(REJECTED_ROWS))
+    from_tables = context.spark.read.parquet(graph.folder.scratch("rejected").uri)
+    return from_tables.select(*from_lists.columns).union(from_lists)
