@@ -47,8 +47,9 @@ def sources(keys: NDArray[np.int64]) -> NDArray[np.int64]:
 
 def split_by_stripe(keys: NDArray[np.int64], n_stripes: int) -> NDArray[np.int64]:
     """Where the keys of each source stripe of the group begin: shape (n_stripes + 1,)."""
-    firsts = np.arange(n_stripes + 1, dtype=np.int64) << (2 * _HOST_BITS)
-    return np.searchsorted(keys, firsts)
+    firsts = np.arange(n_stripes, dtype=np.int64) << (2 * _HOST_BITS)
+    # The end is no key to search for: behind MAX_GROUP_STRIPES it would need the sign bit.
+    return np.append(np.searchsorted(keys, firsts), len(keys))
 
 
 def merge_duplicates(keys: NDArray[np.int64], weights: NDArray[np.int64] | None) -> Edges:
