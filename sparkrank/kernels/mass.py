@@ -40,7 +40,7 @@ def spam_mass(
 
     Notes
     -----
-    Without slice i the others take its share over, so the trust is the rest times 1 / (1 - share i):
+    Without slice i the others take its share over, so the trust is the rest divided by their shares:
     linearity, no further solve.  ``low`` and ``high`` range over the whole core and each core without
     one slice.
     """
@@ -53,7 +53,9 @@ def spam_mass(
     for i in range(m):
         # Summed anew, not subtracted: where the others give nothing, nothing is left, not a rounding.
         rest = _left_sum(np.delete(slice_trust, i, axis=0), len(pagerank))
-        _, without = _masses(pagerank, rest / (1.0 - slice_shares[i]), known_spam_mass)
+        # So are their shares: beside a slice of nearly everything, 1 - share has no digits left.
+        rest_share = sum(slice_shares[:i]) + sum(slice_shares[i + 1 :])
+        _, without = _masses(pagerank, rest / rest_share, known_spam_mass)
         np.minimum(low, without, out=low)
         np.maximum(high, without, out=high)
     return Masses(trust, absolute, relative, low, high)
