@@ -57,7 +57,9 @@ def read_arrays(place: Place) -> dict[str, NDArray[Any]]:
     buffer: mmap.mmap | bytes
     if place.is_local:
         with open(place.local_path, "rb") as file:
-            buffer = mmap.mmap(file.fileno(), 0, access=mmap.ACCESS_READ)
+            # An empty file, as a machine's crash can leave it, cannot be mapped: `_parse` refuses it.
+            empty = os.fstat(file.fileno()).st_size == 0
+            buffer = b"" if empty else mmap.mmap(file.fileno(), 0, access=mmap.ACCESS_READ)
     else:
         buffer = place.read_bytes()
     return _parse(buffer, str(place))
