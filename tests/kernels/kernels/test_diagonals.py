@@ -58,3 +58,12 @@ def test_few_rows_have_no_diagonals() -> None:
     enough = check(random_rows(np.full(MIN_DIAGONAL_ROWS, 3)))
     assert enough.diagonals.tolist() == [MIN_DIAGONAL_ROWS] * 3
     assert len(enough.long_starts) == 0
+
+
+def test_rows_longer_than_the_last_worthwhile_diagonal_stay_together() -> None:
+    """Length 3 is the largest that MIN_DIAGONAL_ROWS rows reach; the rows of 4 and more are long."""
+    lengths = np.array([3] * 50 + [4] * 60 + [900] * (MIN_DIAGONAL_ROWS - 70) + [1] * 5)
+    section = check(random_rows(lengths))
+    assert section.diagonals.tolist() == [55, 50, 50]
+    assert len(section.long_starts) == MIN_DIAGONAL_ROWS - 10
+    assert len(section.rows) == len(lengths)

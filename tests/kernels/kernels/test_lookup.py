@@ -1,5 +1,7 @@
 """Positions of ids, against a plain dict."""
 
+import time
+
 import numpy as np
 import pytest
 from hypothesis import example, given
@@ -47,6 +49,14 @@ def test_crowded_ids_change_nothing(crowd: int) -> None:
         near = [base + 3 * i for i in range(crowd)]
         wanted = [value + step for value in near for step in (0, 1)]
         check([*near, LOWEST, HIGHEST], [*wanted, LOWEST, HIGHEST, 12345])
+
+
+def test_forged_ids_cost_no_walk() -> None:
+    """All ids but one in one range: a walk would take one pass over the wanted ids an id."""
+    ids = np.append(np.arange(100_000), HIGHEST)
+    started = time.process_time()
+    assert (find_ids(ids, ids) == np.arange(100_001)).all()
+    assert time.process_time() - started < 1.0  # some 20 ms by binary search, over 10 s by walking
 
 
 def test_many_uniform_ids() -> None:

@@ -141,6 +141,18 @@ def test_the_range_holds_the_mass_and_known_spam_never_lowers(
     assert (known.relative >= plain.relative - 1e-15 * (1 + trust.sum(axis=0) / p)).all()
 
 
+def test_the_range_holds_the_mass_where_only_rounding_tells_the_cores_apart() -> None:
+    """Slices that reach every host in proportion to their shares: any core gives the same mass."""
+    shares = (0.1, 0.2, 0.7)
+    rate = np.random.default_rng(6).uniform(0.1, 1.0, 1_000)
+    masses = spam_mass(np.ones(1_000), np.outer(shares, rate), shares, None)
+    assert masses.low is not None
+    assert masses.high is not None
+    assert (masses.low <= masses.relative).all()
+    assert (masses.relative <= masses.high).all()
+    assert_allclose(masses.low, masses.high, rtol=0, atol=1e-15)
+
+
 def test_one_slice_that_is_nearly_the_whole_core_can_still_be_left_out() -> None:
     """The rest is scaled by its own share, which 1 minus the large one no longer resolves."""
     trust = np.array([[3.0, 0.0], [2e-20, 0.0]])
