@@ -11,6 +11,7 @@ import re
 import shutil
 import subprocess
 import sys
+import zipfile
 from pathlib import Path
 from typing import TYPE_CHECKING
 
@@ -121,6 +122,8 @@ def open_session(job: str, *, ui: bool = False) -> "SparkSession":
     session = builder.getOrCreate()
     for key, value in _MEANING.items():
         session.conf.set(key, value)
+    if under_submit() or not master_is_local(session):
+        _send_package(session)
     if under_submit() and master_is_local(session):
         _check_heap(session)
     return session
@@ -139,6 +142,23 @@ def _prepare_environment() -> None:
         os.environ["PYTHONPATH"] = os.pathsep.join([root, *paths])
     # Looking up the host's own name fails or warns on many laptops and containers.
     os.environ.setdefault("SPARK_LOCAL_IP", "127.0.0.1")
+
+
+def _send_package(session: "SparkSession") -> None:
+    """Give the workers this package: Spark sends them nothing, though the job's file imports it here."""
+    package = Path(__file__).resolve().parent
+    if not package.is_dir():
+        return  # it came in an archive of --py-files, which the workers have, too
+    from pyspark import SparkFiles
+
+    # Spark's own temporary folder: read from while the session lasts, removed with it.
+    archive = Path(SparkFiles.getRootDirectory(), "package", f"{package.name}.zip")
+    archive.parent.mkdir(exist_ok=True)
+    with zipfile.ZipFile(archive, "w", zipfile.ZIP_DEFLATED) as file:
+        for path in sorted(package.rglob("*")):
+            if path.is_file() and "__pycache__" not in path.parts:
+                file.write(path, path.relative_to(package.parent))
+    session.sparkContext.addPyFile(str(archive))
 
 
 def _own_settings(ui: bool) -> dict[str, str]:
