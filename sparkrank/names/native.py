@@ -1,18 +1,125 @@
-"""Canonical hosts in native Spark expressions, and Python for the odd values these cannot decide.
+"""What the values of an input name: plain ones decided many at a time, the odd ones in Python.
 
-Edge tables hold billions of strings, nearly all of them plain: letters, digits, hyphens, dots. For
-those the canonical host is a piece of the value in lower case, and `plain_host` finds it without leaving
-the JVM. Everything else goes distinct to `canonical_host`, once a value.
+Edge tables hold billions of strings. A reader hands over the distinct values of a chunk; the kernel cuts
+the hosts out of the plain ones, and `canonical_host` decides each odd one. Odd values such as addresses and
+IDNA names come back chunk after chunk, so the last ones decided are remembered.
 
-`plain_host` never disagrees with `canonical_host` where it answers; where it is not sure it is null.
+The plain way never disagrees with `canonical_host` where it answers.
 """
 
+from collections.abc import Iterator
+from dataclasses import dataclass
+from functools import lru_cache
+
+import numpy as np
 import pyarrow as pa
+import pyarrow.compute as pc
+from numpy.typing import NDArray
 from pyspark.sql import Column, DataFrame
 from pyspark.sql import functions as sf
 from pyspark.sql.types import StringType, StructField, StructType
 
-from sparkrank.names.canonical import MAX_NAME_CHARACTERS, canonical_host
+from sparkrank.kernels.plain_hosts import PlainHosts, find_plain_hosts
+from sparkrank.names.canonical import MAX_NAME_CHARACTERS, CanonicalName, canonical_host
+
+# Names and short URLs; with a few hundred bytes a value and its answer, some 30 MB at most.
+_REMEMBERED_VALUES = 1 << 16
+_REMEMBERED_CHARACTERS = 300
+
+
+@dataclass(frozen=True, kw_only=True)
+class DecidedNames:
+    """What n values name; exactly one of the two is null at each place."""
+
+    hosts: pa.StringArray
+    """Canonical hosts, null where a value names none."""
+    reasons: pa.StringArray
+    """Keys of REASONS, null where there is a host."""
+
+
+def decide_names(values: pa.Array | pa.ChunkedArray) -> DecidedNames:
+    """The canonical host of every value, or the reason why there is none, in the order of the values.
+
+    `values` are of type string, large_string, binary or large_binary and may hold nulls (reason `null`);
+    bytes that are not UTF-8 are read as U+FFFD. Values that occur twice are decided twice. The hosts of one
+    call have at most 2 GiB. Raises TypeError for values of another type.
+    """
+    chunks = values.chunks if isinstance(values, pa.ChunkedArray) else [values]
+    decided = [_decide(chunk) for chunk in chunks]
+    if len(decided) == 1:
+        return decided[0]
+    none = pa.array([], pa.string())
+    return DecidedNames(
+        hosts=pa.concat_arrays([none, *(names.hosts for names in decided)]),
+        reasons=pa.concat_arrays([none, *(names.reasons for names in decided)]),
+    )
+
+
+def _decide(values: pa.Array) -> DecidedNames:
+    data, offsets = octets_of(values)
+    found = find_plain_hosts(data, offsets)
+    plain = found.lengths > 0
+    if values.null_count:
+        plain &= pc.is_valid(values).to_numpy(zero_copy_only=False)
+    hosts = _string_array(found, plain)
+    reasons = pa.nulls(len(values), pa.string())
+    if plain.all():
+        return DecidedNames(hosts=hosts, reasons=reasons)
+    names = list(_odd_names(values, data, offsets, np.flatnonzero(~plain)))
+    odd = pa.array(~plain)
+    return DecidedNames(
+        hosts=pc.replace_with_mask(hosts, odd, pa.array([name.host for name in names], pa.string())),
+        reasons=pc.replace_with_mask(reasons, odd, pa.array([name.reason for name in names], pa.string())),
+    )
+
+
+def _odd_names(
+    values: pa.Array, data: NDArray[np.uint8], offsets: NDArray[np.int64], odd: NDArray[np.int64]
+) -> Iterator[CanonicalName]:
+    # A null may have bytes of its own, which mean nothing.
+    valid = pc.is_valid(values.take(pa.array(odd))) if values.null_count else None
+    for at, (begin, end) in enumerate(zip(offsets[odd].tolist(), offsets[odd + 1].tolist(), strict=True)):
+        if valid is not None and not valid[at].as_py():
+            yield canonical_host(None)
+            continue
+        text = data[begin:end].tobytes().decode("utf-8", "replace")
+        yield _remembered(text) if len(text) < _REMEMBERED_CHARACTERS else canonical_host(text)
+
+
+@lru_cache(maxsize=_REMEMBERED_VALUES)
+def _remembered(value: str) -> CanonicalName:
+    return canonical_host(value)
+
+
+def octets_of(values: pa.Array) -> tuple[NDArray[np.uint8], NDArray[np.int64]]:
+    """The bytes of a string or binary array without a copy, shape (n_bytes,), and its n + 1 offsets.
+
+    Value i is `data[offsets[i]:offsets[i + 1]]`. The bytes of a null mean nothing. Raises TypeError for an
+    array of another type.
+    """
+    if pa.types.is_string(values.type) or pa.types.is_binary(values.type):
+        width = "i4"
+    elif pa.types.is_large_string(values.type) or pa.types.is_large_binary(values.type):
+        width = "i8"
+    else:
+        raise TypeError(f"names: expected an array of strings or bytes, found {values.type}")
+    if len(values) == 0:
+        return np.empty(0, dtype=np.uint8), np.zeros(1, dtype=np.int64)
+    _, offsets_buffer, data_buffer = values.buffers()
+    offsets = np.frombuffer(offsets_buffer, dtype=width, count=values.offset + len(values) + 1)
+    data = np.empty(0, np.uint8) if data_buffer is None else np.frombuffer(data_buffer, dtype=np.uint8)
+    return data, offsets[values.offset :].astype(np.int64)
+
+
+def _string_array(found: PlainHosts, valid: NDArray[np.bool_]) -> pa.StringArray:
+    offsets = np.zeros(len(found.lengths) + 1, dtype=np.int64)
+    np.cumsum(found.lengths, out=offsets[1:])
+    if offsets[-1] > np.iinfo(np.int32).max:
+        raise ValueError(f"names: expected hosts of at most 2 GiB in one call, found {offsets[-1]:,} bytes")
+    buffers = [None if valid.all() else pa.array(valid).buffers()[1]]
+    buffers += [pa.py_buffer(offsets.astype(np.int32)), pa.py_buffer(found.data)]
+    return pa.Array.from_buffers(pa.string(), len(valid), buffers)
+
 
 # Possessive quantifiers (`*+`) keep matching linear; bounded input keeps the matcher's recursion bounded.
 # No flags: under (?i) with Unicode folding, the Kelvin sign would pass for a k.
