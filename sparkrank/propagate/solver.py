@@ -11,6 +11,7 @@ from __future__ import annotations
 import logging
 import time
 from dataclasses import dataclass
+from functools import partial
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -19,6 +20,7 @@ from numpy.typing import NDArray
 from sparkrank.arrays import has_arrays, read_arrays, write_arrays
 from sparkrank.errors import NotConverged
 from sparkrank.propagate.layers import BaseTask, Flows, LayerTask, Solve
+from sparkrank.propagate.mixing import KEPT_STEPS, cycle_start, is_mixed_after, mix_states, state_before
 from sparkrank.propagate.pull import phase_size, pull
 from sparkrank.tasks import TaskRunner
 
@@ -96,6 +98,8 @@ def _iterate(
     step, record = _last_step(solve)
     if record is not None:
         log.info("solve: going on after step %d", step)
+        # A stop between a step's record and its cleaning left the files that it replaces.
+        solve.folder.drop_step(step - 2)
     else:
         stripes.run(_StartTask(solve), "start")
     cells = TaskRunner(spark, plan.stripes * plan.solve_groups) if plan.solve_groups > 1 else None
@@ -104,12 +108,14 @@ def _iterate(
             if step >= max_steps:
                 raise _not_converged(record, tolerance, max_steps)
             started = time.monotonic()
+            if is_mixed_after(step):
+                mix_states(solve, stripes, step)
             step += 1
             if cells is not None:
                 cells.run(_PartialTask(solve, step), f"step {step}: cells")
             reports = stripes.run(_StepTask(solve, step), f"step {step}")
             record = solve.folder.commit(f"step-{step:05d}", _step_record(step, reports))
-            solve.folder.drop_step(step - 2)
+            solve.folder.drop_step(step - KEPT_STEPS)
             _log_step(record, solve.columns.count, time.monotonic() - started)
     finally:
         if cells is not None:
@@ -118,19 +124,27 @@ def _iterate(
 
 
 def _last_step(solve: Solve) -> tuple[int, dict[str, Any] | None]:
-    """The last committed step whose files are what its record says, or (0, None)."""
+    """The last committed step from which the solve can go on, or (0, None).
+
+    That is a step whose own files, and those of the steps it will be mixed with, are what their
+    records say.
+    """
     step = 0
     while solve.folder.record(f"step-{step + 1:05d}") is not None:
         step += 1
     while step > 0:
-        record = solve.folder.record(f"step-{step:05d}")
-        assert record is not None
-        stamps = enumerate(record["stamps"])
-        if all(has_arrays(solve.folder.state(step, stripe), stamp) for stripe, stamp in stamps):
-            return step, record
+        first = cycle_start(step)
+        if all(_is_whole(solve, needed) for needed in range(max(1, first), step + 1)):
+            return step, solve.folder.record(f"step-{step:05d}")
         log.warning("step %d: files are missing or damaged; the step is done again", step)
         step -= 1
     return 0, None
+
+
+def _is_whole(solve: Solve, step: int) -> bool:
+    record = solve.folder.record(f"step-{step:05d}")
+    stamps = enumerate(record["stamps"] if record else [])
+    return all(has_arrays(solve.folder.state(step, stripe), stamp) for stripe, stamp in stamps)
 
 
 def _step_record(step: int, reports: list[dict[str, Any]]) -> dict[str, Any]:
@@ -220,7 +234,7 @@ class _StepTask:
         score += read_arrays(folder.base(stripe))["base"]
         factor = solve.flow_per_score(stripe, core)
         flow = score * factor
-        before = read_arrays(folder.state(self.step - 1, stripe))["flow"]
+        before = read_arrays(state_before(solve.folder, self.step, stripe))["flow"]
         # The change of the score itself: core hosts have out-links, so no factor is 0.
         change = np.abs(flow - before)
         change /= factor
@@ -248,6 +262,6 @@ def _core_inflow(solve: Solve, step: int, stripe: int, groups: range) -> tuple[N
     """What the core sends into a stripe's core hosts, and over how many edges."""
     core = solve.graph.core_phase
     inflow = np.zeros((solve.columns.count, phase_size(solve.graph, stripe, core)))
-    flows = Flows(solve, step - 1)
+    flows = Flows(solve, partial(state_before, solve.folder, step))
     n_edges = pull(solve.graph, stripe, core, range(core, core + 1), groups, flows, inflow)
     return inflow, n_edges
