@@ -16,6 +16,8 @@ from itertools import pairwise
 import numpy as np
 from numpy.typing import NDArray
 
+from sparkrank.kernels.cut import cut
+
 # DNS limits, as everywhere in the program.
 _MAX_NAME_BYTES = 253
 _MAX_LABEL_BYTES = 63
@@ -66,7 +68,7 @@ def find_plain_hosts(data: NDArray[np.uint8], offsets: NDArray[np.int64]) -> Pla
         block = data[offsets[first] : offsets[last]]
         begin, end = _Block(block, bounds).find()
         lengths[first:last] = end - begin
-        pieces.append(_cut(block, bounds, begin, end))
+        pieces.append(_lower(cut(block, bounds, begin, end)))
     return PlainHosts(data=np.concatenate(pieces), lengths=lengths)
 
 
@@ -85,16 +87,10 @@ def _blocks(offsets: _Longs) -> list[tuple[int, int]]:
     return blocks
 
 
-def _cut(block: _Bytes, bounds: _Longs, begin: _Longs, end: _Longs) -> _Bytes:
-    """The bytes from begin to end of each value, in lower case."""
-    if (begin == bounds[:-1]).all() and (end == bounds[1:]).all():
-        piece = block
-    else:
-        parts = np.column_stack([begin - bounds[:-1], end - begin, bounds[1:] - end]).ravel()
-        wanted = np.repeat(np.tile(np.array([False, True, False]), len(begin)), parts)
-        piece = block[wanted]
-    capital = (piece - np.uint8(ord("A"))) < 26
-    return piece + (capital.view(np.uint8) << np.uint8(5)) if capital.any() else piece
+def _lower(octets: _Bytes) -> _Bytes:
+    """ASCII in lower case."""
+    capital = (octets - np.uint8(ord("A"))) < 26
+    return octets + (capital.view(np.uint8) << np.uint8(5)) if capital.any() else octets
 
 
 class _Block:

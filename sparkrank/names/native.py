@@ -19,8 +19,9 @@ from pyspark.sql import Column, DataFrame
 from pyspark.sql import functions as sf
 from pyspark.sql.types import StringType, StructField, StructType
 
-from sparkrank.kernels.plain_hosts import PlainHosts, find_plain_hosts
+from sparkrank.kernels.plain_hosts import find_plain_hosts
 from sparkrank.names.canonical import MAX_NAME_CHARACTERS, CanonicalName, canonical_host
+from sparkrank.names.octets import octets_of, string_array
 
 # Names and short URLs; with a few hundred bytes a value and its answer, some 30 MB at most.
 _REMEMBERED_VALUES = 1 << 16
@@ -61,7 +62,7 @@ def _decide(values: pa.Array) -> DecidedNames:
     plain = found.lengths > 0
     if values.null_count:
         plain &= pc.is_valid(values).to_numpy(zero_copy_only=False)
-    hosts = _string_array(found, plain)
+    hosts = string_array(found.data, found.lengths, plain)
     reasons = pa.nulls(len(values), pa.string())
     if plain.all():
         return DecidedNames(hosts=hosts, reasons=reasons)
@@ -89,36 +90,6 @@ def _odd_names(
 @lru_cache(maxsize=_REMEMBERED_VALUES)
 def _remembered(value: str) -> CanonicalName:
     return canonical_host(value)
-
-
-def octets_of(values: pa.Array) -> tuple[NDArray[np.uint8], NDArray[np.int64]]:
-    """The bytes of a string or binary array without a copy, shape (n_bytes,), and its n + 1 offsets.
-
-    Value i is `data[offsets[i]:offsets[i + 1]]`. The bytes of a null mean nothing. Raises TypeError for an
-    array of another type.
-    """
-    if pa.types.is_string(values.type) or pa.types.is_binary(values.type):
-        width = "i4"
-    elif pa.types.is_large_string(values.type) or pa.types.is_large_binary(values.type):
-        width = "i8"
-    else:
-        raise TypeError(f"names: expected an array of strings or bytes, found {values.type}")
-    if len(values) == 0:
-        return np.empty(0, dtype=np.uint8), np.zeros(1, dtype=np.int64)
-    _, offsets_buffer, data_buffer = values.buffers()
-    offsets = np.frombuffer(offsets_buffer, dtype=width, count=values.offset + len(values) + 1)
-    data = np.empty(0, np.uint8) if data_buffer is None else np.frombuffer(data_buffer, dtype=np.uint8)
-    return data, offsets[values.offset :].astype(np.int64)
-
-
-def _string_array(found: PlainHosts, valid: NDArray[np.bool_]) -> pa.StringArray:
-    offsets = np.zeros(len(found.lengths) + 1, dtype=np.int64)
-    np.cumsum(found.lengths, out=offsets[1:])
-    if offsets[-1] > np.iinfo(np.int32).max:
-        raise ValueError(f"names: expected hosts of at most 2 GiB in one call, found {offsets[-1]:,} bytes")
-    buffers = [None if valid.all() else pa.array(valid).buffers()[1]]
-    buffers += [pa.py_buffer(offsets.astype(np.int32)), pa.py_buffer(found.data)]
-    return pa.Array.from_buffers(pa.string(), len(valid), buffers)
 
 
 # Possessive quantifiers (`*+`) keep matching linear; bounded input keeps the matcher's recursion bounded.

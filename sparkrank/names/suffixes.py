@@ -14,20 +14,28 @@ from functools import cached_property
 from pathlib import Path
 from typing import Literal
 
+import numpy as np
 import publicsuffixlist
 import pyarrow as pa
+import pyarrow.compute as pc
 from pyspark.sql import Column, DataFrame
 from pyspark.sql import functions as sf
 
 from sparkrank.errors import ConfigError
+from sparkrank.kernels.cut import cut
+from sparkrank.kernels.labels import LastLabels
 from sparkrank.names.addresses import ends_in_number, is_dotted_ipv4
 from sparkrank.names.canonical import canonical_host
 from sparkrank.names.idn import domain_to_ascii
+from sparkrank.names.octets import octets_of, string_array
 
 SuffixSections = Literal["icann", "icann+private"]
 
 _BEGIN, _END = "// ===BEGIN ", "// ===END "
 _EXTRA = "names.extra_suffixes"
+
+# Some megabytes of names and positions.
+_HOSTS_A_PASS = 1 << 16
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -64,6 +72,35 @@ class SuffixRules:
         """SHA-256 (hexadecimal) of the rules; equal for equal rules, however they were put together."""
         lines = "".join(f"{name} {labels}\n" for name, labels in sorted(self.suffix_labels.items()))
         return hashlib.sha256(lines.encode("ascii")).hexdigest()
+
+    @cached_property
+    def tables_by_depth(self) -> list[tuple[int, pa.Table]]:
+        """Tables of the rules' names of L labels, L ascending, for tools that look up many hosts at once.
+
+        Columns: `name`; `labels`, those of the suffix, as in `suffix_labels`; and with two labels `longer`,
+        whether longer names end in this one, which may be no rule's name then and has null labels. Plain
+        rules of one label are left out: they say what holds without them.
+        """
+        depths: dict[int, dict[str, int]] = {}
+        for name, labels in sorted(self.suffix_labels.items()):
+            depth = name.count(".") + 1
+            if (depth, labels) != (1, 1):
+                depths.setdefault(depth, {})[name] = labels
+        beyond = (name for depth, names in depths.items() if depth > 2 for name in names)
+        longer = {".".join(name.split(".")[-2:]) for name in beyond}
+        if longer:
+            depths.setdefault(2, {})
+        tables: list[tuple[int, pa.Table]] = []
+        for depth in sorted(depths):
+            names = sorted({*depths[depth], *longer}) if depth == 2 else sorted(depths[depth])
+            columns = {
+                "name": pa.array(names, pa.string()),
+                "labels": pa.array([depths[depth].get(name) for name in names], pa.int32()),
+            }
+            if depth == 2:
+                columns["longer"] = pa.array([name in longer for name in names], pa.bool_())
+            tables.append((depth, pa.table(columns)))
+        return tables
 
     def split(self, host: str) -> tuple[str | None, str | None]:
         """Public suffix and registrable domain of a canonical host.
@@ -125,6 +162,38 @@ def _extra_rule(rule: str, where: str) -> str:
     return prefix + host
 
 
+def domains_of(hosts: pa.Array, rules: SuffixRules) -> pa.StringArray:
+    """Registrable domains of canonical hosts (strings, nulls allowed), null as in `SuffixRules.split`.
+
+    One lookup a rule length: the names of L labels are looked up for the hosts' last L labels, and the
+    longest match wins.
+    """
+    parts = [_domains(hosts.slice(at, _HOSTS_A_PASS), rules) for at in range(0, len(hosts), _HOSTS_A_PASS)]
+    return pa.concat_arrays(parts) if parts else pa.array([], pa.string())
+
+
+def _domains(hosts: pa.Array, rules: SuffixRules) -> pa.StringArray:
+    data, offsets = octets_of(hosts)
+    labels = LastLabels(data, offsets)
+    count = np.ones(len(hosts), dtype=np.int64)
+    may_match = np.ones(len(hosts), dtype=np.bool_)
+    for depth, table in rules.tables_by_depth:
+        at = np.flatnonzero(may_match & (labels.n_labels >= depth))
+        begin = offsets[1:].copy()
+        begin[at] = labels.begin(depth)[at]
+        ends = string_array(cut(data, offsets, begin, offsets[1:]), (offsets[1:] - begin)[at])
+        place = pc.index_in(ends, value_set=table["name"])
+        found = table["labels"].take(place).fill_null(0).to_numpy()
+        count[at] = np.where(found > 0, found, count[at])
+        if "longer" in table.column_names:
+            may_match[at] = table["longer"].take(place).fill_null(False).to_numpy()
+    has_domain = labels.n_labels > count
+    if hosts.null_count:
+        has_domain &= hosts.is_valid().to_numpy(zero_copy_only=False)
+    begin = np.where(has_domain, labels.begin(count + 1), offsets[1:])
+    return string_array(cut(data, offsets, begin, offsets[1:]), offsets[1:] - begin, has_domain)
+
+
 def with_suffix_and_domain(frame: DataFrame, host_column: str, rules: SuffixRules) -> DataFrame:
     """Add `suffix` and `domain` (strings, null as in `SuffixRules.split`) of canonical hosts to a frame.
 
@@ -138,7 +207,9 @@ def with_suffix_and_domain(frame: DataFrame, host_column: str, rules: SuffixRule
     is_name = ~(host.startswith("[") | _is_ipv4(host) | _has_empty_label(host))
     joined = frame
     found: list[Column] = []
-    for depth, table in _tables_by_depth(frame, rules):
+    for depth, names in rules.tables_by_depth:
+        columns = [f"_suffix_{column}_{depth}" for column in names.column_names]
+        table = frame.sparkSession.createDataFrame(names.rename_columns(columns))
         key = sf.substring_index(host, ".", -depth)
         if depth > 2:
             key = sf.when(sf.col("_suffix_longer_2"), key)
@@ -168,27 +239,3 @@ def _has_empty_label(host: Column) -> Column:
 def _last_labels(host: Column, count: Column) -> Column:
     # The Python function of this name takes no column for the count.
     return sf.call_function("substring_index", host, sf.lit("."), -count)
-
-
-def _tables_by_depth(frame: DataFrame, rules: SuffixRules) -> list[tuple[int, DataFrame]]:
-    """Tables of the names of L labels, L ascending. Plain rules of one label say what holds without them."""
-    depths: dict[int, dict[str, int]] = {}
-    for name, labels in sorted(rules.suffix_labels.items()):
-        depth = name.count(".") + 1
-        if (depth, labels) != (1, 1):
-            depths.setdefault(depth, {})[name] = labels
-    longer = {
-        ".".join(name.split(".")[-2:]) for depth, names in depths.items() if depth > 2 for name in names
-    }
-    if longer:
-        depths.setdefault(2, {})
-    tables: list[tuple[int, DataFrame]] = []
-    for depth in sorted(depths):
-        columns: dict[str, pa.Array] = {}
-        names = sorted({*depths[depth], *longer}) if depth == 2 else sorted(depths[depth])
-        columns[f"_suffix_name_{depth}"] = pa.array(names, pa.string())
-        columns[f"_suffix_labels_{depth}"] = pa.array([depths[depth].get(name) for name in names], pa.int32())
-        if depth == 2:
-            columns["_suffix_longer_2"] = pa.array([name in longer for name in names], pa.bool_())
-        tables.append((depth, frame.sparkSession.createDataFrame(pa.table(columns))))
-    return tables

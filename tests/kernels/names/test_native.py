@@ -16,7 +16,8 @@ from sparkrank.kernels import plain_hosts
 from sparkrank.kernels.plain_hosts import find_plain_hosts
 from sparkrank.names import native
 from sparkrank.names.canonical import CanonicalName, canonical_host
-from sparkrank.names.native import decide_names, octets_of
+from sparkrank.names.native import decide_names
+from sparkrank.names.octets import octets_of
 
 VECTORS = Path(__file__).parents[2] / "data" / "whatwg"
 HUGE = 10_000_000

@@ -4,11 +4,15 @@ import re
 from pathlib import Path
 
 import publicsuffixlist
+import pyarrow as pa
 import pytest
+from hypothesis import given
+from hypothesis import strategies as st
 
 from sparkrank.errors import ConfigError
+from sparkrank.names import suffixes
 from sparkrank.names.canonical import canonical_host
-from sparkrank.names.suffixes import SuffixRules
+from sparkrank.names.suffixes import SuffixRules, domains_of
 
 PACKAGE = Path(publicsuffixlist.__file__).parent
 RULES = SuffixRules.load()
@@ -100,3 +104,70 @@ def test_fingerprint_follows_the_rules() -> None:
     assert base != SuffixRules.load("icann", ["a.example"]).fingerprint
     assert base != SuffixRules.load("icann", ["a.example", "*.b.example"]).fingerprint
     assert base != SuffixRules.load("icann+private", ["a.example", "b.example"]).fingerprint
+
+
+EXTRA = ("pages.example", "*.farm.example", "!www.farm.example", "a.b.c.d.deep.example", "*.wild")
+RULE_SETS = [
+    SuffixRules.load("icann+private", EXTRA),
+    SuffixRules.of_rules([]),
+    SuffixRules.of_rules(["test"]),
+    SuffixRules.of_rules(["*.test", "a.test"]),
+    SuffixRules.of_rules(["b.c.test"]),
+]
+ODD_HOSTS = [
+    "", ".", "..", "...", ".test", "test.", "a..test", "a.b..", "192.0.2.1", "1.1.1.1", "255.255.255.255",
+    "[2001:db8::1]", "[::c000:201]", "localhost", "a", "1.2.example", "a.7x7", "a.x7", "shop.1a", "a-.-b",
+]  # fmt: skip
+
+
+def check_domains(hosts: list[str | None], rules: SuffixRules) -> None:
+    found = domains_of(pa.array(hosts, pa.string()), rules)
+    found.validate(full=True)
+    assert found.type == pa.string()
+    assert found.to_pylist() == [None if host is None else rules.split(host)[1] for host in hosts]
+
+
+@pytest.mark.parametrize("rules", RULE_SETS)
+def test_domains_of_many_hosts_are_those_of_each(rules: SuffixRules, monkeypatch: pytest.MonkeyPatch) -> None:
+    around_extra = [
+        f"{head}{rule.strip('!*.')}"
+        for rule in EXTRA
+        for head in ("", "w.", "v.w.", "u.v.w.", "www.", "x.www.")
+    ]
+    hosts = [*ODD_HOSTS, None, *around_extra, *hosts_around_every_rule(), None, *ODD_HOSTS]
+    check_domains(hosts, rules)
+    monkeypatch.setattr(suffixes, "_HOSTS_A_PASS", 1_000)
+    check_domains(hosts, rules)
+    sliced = pa.array(hosts, pa.string()).slice(5, 50)
+    assert domains_of(sliced, rules).to_pylist() == domains_of(pa.array(hosts), rules).to_pylist()[5:55]
+    monkeypatch.setattr(suffixes, "_HOSTS_A_PASS", 1)
+    check_domains(hosts[:100], rules)
+
+
+@given(
+    st.lists(
+        st.one_of(
+            st.none(),
+            st.sampled_from(ODD_HOSTS),
+            st.lists(
+                st.sampled_from(["", "a", "b", "c", "test", "wild", "www", "farm", "example", "7x"]),
+                max_size=7,
+            ).map(".".join),
+        ),
+        max_size=30,
+    ),
+    st.sampled_from(RULE_SETS),
+)
+def test_domains_of_made_hosts(hosts: list[str | None], rules: SuffixRules) -> None:
+    check_domains(hosts, rules)
+
+
+def test_domains_of_no_hosts() -> None:
+    assert domains_of(pa.array([], pa.string()), RULES).equals(pa.array([], pa.string()))
+    assert domains_of(pa.nulls(3, pa.string()), RULES).equals(pa.nulls(3, pa.string()))
+
+
+def test_the_bytes_of_a_null_name_nothing() -> None:
+    behind = pa.array(["a.shop.example", "b.shop.example"]).buffers()[1:]
+    hidden = pa.Array.from_buffers(pa.string(), 2, [pa.py_buffer(b"\x02"), *behind])
+    assert domains_of(hidden, RULES).to_pylist() == [None, "shop.example"]
