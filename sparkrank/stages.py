@@ -235,11 +235,16 @@ def _strength(config: Config, scored: StepRecord) -> CoreStrength:
 
 def _rejected(context: JobContext, graph: Graph, inputs: RunInputs, solved: SolvedHosts) -> DataFrame:
     """Rejected values of the tables and of the lists."""
+    from pyspark.sql import functions as sf
+
     from sparkrank.tables import spark_schema
 
     lists = [inputs.lists.core, *filter(None, [inputs.lists.known_spam])]
     rejections = [r for one in lists for r in one.rejections] + list(solved.members.unmatched)
     rows = [(r.source, r.row_value, r.reason, r.rows) for r in rejections]
-    from_lists = context.spark.createDataFrame(rows, spark_schema(REJECTED_ROWS))
-    from_tables = context.spark.read.parquet(graph.folder.scratch("rejected").uri)
-    return from_tables.select(*from_lists.columns).union(from_lists)
+    found = context.spark.createDataFrame(rows, spark_schema(REJECTED_ROWS))
+    if graph.rejected_pieces:
+        paths = [graph.folder.rejected(piece).uri for piece in graph.rejected_pieces]
+        found = found.union(context.spark.read.parquet(*paths).select(*found.columns))
+    # The same value may have been met in several pieces.
+    return found.groupBy("source", "row_value", "reason").agg(sf.sum("rows").alias("rows"))

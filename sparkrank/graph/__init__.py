@@ -1,5 +1,5 @@
-"""Edge rows → a graph in work files: ``rows`` → ``hosts`` → ``tiles`` → ``peeling`` → ``cells``.
+"""Edge rows → a graph in work files: ``scan`` → ``hosts`` → ``tiles`` → ``peeling`` → ``cells``.
 
-``plan`` sizes the grid, ``folder`` names the files, ``sinks`` brings Spark rows into numpy tasks,
-``build`` runs the stages and recognises what is already done.
+``pieces`` cuts the input into tasks, ``plan`` sizes the grid, ``folder`` names the files, ``build`` runs
+the stages and recognises what is already done.
 """

@@ -6,18 +6,20 @@ import hashlib
 import json
 import logging
 import time
+from collections.abc import Callable
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
 from sparkrank.config import Config
-from sparkrank.errors import InputRefused
+from sparkrank.errors import InputRefused, SparkrankError
 from sparkrank.graph.cells import CellWriter
 from sparkrank.graph.folder import GraphFolder
-from sparkrank.graph.hosts import write_hosts
+from sparkrank.graph.hosts import HostsTask
 from sparkrank.graph.peeling import Peeling
+from sparkrank.graph.pieces import Piece, plan_pieces
 from sparkrank.graph.plan import GridPlan, plan_grid
-from sparkrank.graph.rows import EdgeRows, check_rejected_share
-from sparkrank.graph.tiles import write_tiles
+from sparkrank.graph.scan import ScanTask
+from sparkrank.graph.tiles import TileTask
 from sparkrank.inputs import InputFacts
 from sparkrank.names.suffixes import SuffixRules
 from sparkrank.places import Place
@@ -27,6 +29,13 @@ if TYPE_CHECKING:
     from pyspark.sql import SparkSession
 
 log = logging.getLogger(__name__)
+
+# The seed under which the ids of hosts are most likely distinct is as good as any other; Spark's own
+# xxhash64 uses this one, so ids can be looked up from SQL.
+_FIRST_SALT = 42
+_SALTS = 3
+_SUMMED = ("rows", "edge_rows", "not_followed", "self_links", "clashes")
+_BY_REASON = ("rejected", "rejected_hosts")
 
 # Counts up whenever a change makes other work files or other canonical names from the same input.
 _LAYOUT_VERSION = 1
@@ -48,6 +57,7 @@ class Graph:
     phase_starts: list[list[int]]
     core_phase: int
     cells: list[tuple[int, int]]
+    rejected_pieces: list[int]
     counts: dict[str, Any]
 
     @property
@@ -92,11 +102,11 @@ def build_graph(
 ) -> Graph:
     """Builds the graph, or recognises the one already built from the same input and settings.
 
-    1. odd names decided, rejected rows set aside     (record: names)
-    2. hosts → ids and names, a stripe each           (record: hosts)
-    3. rows → distinct edges and degrees, a tile each (record: tiles)
-    4. peel rounds, the order of hosts                (record: order)
-    5. tiles → cells                                  (record: graph)
+    1. rows → ids by tile, hosts by stripe, rejected values   (record: scan)
+    2. hosts → sorted ids and names, a stripe each            (record: hosts)
+    3. ids → distinct edges and degrees, a tile each          (record: tiles)
+    4. peel rounds, the order of hosts                        (record: order)
+    5. tiles → cells                                          (record: graph)
 
     Stages with a record are not done again.  InputRefused where too many rows are rejected or no edge
     is left.
@@ -106,20 +116,41 @@ def build_graph(
     folder = GraphFolder(place=work.child("graphs", fingerprint[:24]))
     if record := folder.record("graph"):
         log.info("graph %s is there already: %s hosts", fingerprint[:12], f"{record['counts']['hosts']:,}")
-        names = folder.record("names") or {}
-        check_rejected_share(names, edges.rows, config.graph.max_rejected_share)
+        check_rejected_share(record["counts"], config.graph.max_rejected_share)
         return _graph(folder, record)
-    builder = _Builder(spark=spark, config=config, folder=folder, plan=plan, edges=edges)
-    rows = EdgeRows(
-        spark=spark,
-        folder=folder,
-        facts=edges,
-        hosts_facts=hosts,
-        follow_only=config.graph.follow_only,
-        domain_rules=rules if config.graph.node == "domain" else None,
+    domain_rules = rules if config.graph.node == "domain" else None
+    builder = _Builder(
+        spark=spark, config=config, folder=folder, plan=plan, pieces=_pieces(config, edges, hosts)
     )
-    record = builder.run(rows, fingerprint)
-    return _graph(folder, record)
+    return _graph(folder, builder.run(domain_rules, fingerprint))
+
+
+def check_rejected_share(counts: dict[str, Any], allowed: float) -> None:
+    """InputRefused where more than the allowed share of the edge rows was rejected."""
+    rejected, rows = counts["rejected"], counts["rows"]
+    n_rejected = sum(rejected.values())
+    if n_rejected > allowed * rows:
+        most = sorted(rejected.items(), key=lambda item: (-item[1], item[0]))[:3]
+        reasons = ", ".join(f"{reason} {count:,}" for reason, count in most)
+        raise InputRefused(
+            f"input.edges: expected at most {allowed:.4g} of the rows to be rejected "
+            f"(graph.max_rejected_share), found {n_rejected:,} of {rows:,} ({reasons}); "
+            "mend the edge table or allow more"
+        )
+
+
+def _pieces(config: Config, edges: InputFacts, hosts: InputFacts | None) -> list[Piece]:
+    """Edge pieces, then pieces of the hosts list."""
+    columns, text = ["src", "dst"], ["src", "dst"]
+    if edges.has_links:
+        columns.append("links")
+    if edges.has_rel and config.graph.follow_only:
+        columns.append("rel")
+        text.append("rel")
+    pieces = plan_pieces(edges, tuple(columns), tuple(text))
+    if hosts is not None:
+        pieces += plan_pieces(hosts, ("host",), ("host",))
+    return pieces
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -128,55 +159,99 @@ class _Builder:
     config: Config
     folder: GraphFolder
     plan: GridPlan
-    edges: InputFacts
+    pieces: list[Piece]
 
-    def run(self, rows: EdgeRows, fingerprint: str) -> dict[str, Any]:
+    def run(self, domain_rules: SuffixRules | None, fingerprint: str) -> dict[str, Any]:
         weighted = self.config.graph.weighting == "links"
-        names = self._stage("names", rows.set_odd_aside)
-        check_rejected_share(names, self.edges.rows, self.config.graph.max_rejected_share)
-        hosts = self._stage("hosts", lambda: write_hosts(rows.hosts(names), self.folder, self.plan))
-        followed = rows.accepted(names).where("followed")
-        tiles = self._stage(
-            "tiles",
-            lambda: write_tiles(followed, self.folder, self.plan, hosts["salt"], weighted=weighted),
-        )
+        scan, hosts = self._scan(domain_rules, weighted=weighted)
+        tiles = self._stage("tiles", lambda: self._tile(scan, weighted=weighted))
         if not tiles["edges"]:
             raise InputRefused(
-                f"input.edges: expected links between different hosts, found none in "
-                f"{self.edges.rows:,} rows "
-                f"({names['rejected_rows']:,} rejected, {tiles['self_links']:,} self-links, the rest not "
-                "followed); check the columns src, dst and rel"
+                f"input.edges: expected links between different hosts, found none in {scan['rows']:,} rows "
+                f"({sum(scan['rejected'].values()):,} rejected, {scan['self_links']:,} self-links, "
+                f"{scan['not_followed']:,} not followed); check the columns src, dst and rel"
             )
         order = self._stage("order", lambda: self._peel(tiles, weighted=weighted))
         record = self._stage(
             "graph",
-            lambda: (
-                self._pack(tiles, order)
-                | {
-                    "fingerprint": fingerprint,
-                    "plan": self.plan.as_dict(),
-                    "salt": hosts["salt"],
-                    "phase_starts": order["phase_starts"],
-                    "core_phase": order["source_rounds"],
-                    "counts": self._counts(names, hosts, tiles, order),
-                }
-            ),
+            lambda: {
+                **self._pack(tiles, order),
+                "fingerprint": fingerprint,
+                "plan": self.plan.as_dict(),
+                "salt": scan["salt"],
+                "rejected_pieces": scan["rejected_pieces"],
+                "phase_starts": order["phase_starts"],
+                "core_phase": order["source_rounds"],
+                "counts": _counts(scan, hosts, tiles, order),
+            },
         )
-        for name in ("tiles", "peel"):
+        for name in ("scan", "tiles", "peel"):
             self.folder.place.child(name).delete_tree()
-        for name in ("odd", "names", "decided"):
-            self.folder.scratch(name).delete_tree()
         return record
 
-    def _stage(self, name: str, work: Any) -> dict[str, Any]:
+    def _stage(self, name: str, work: Callable[[], dict[str, Any]]) -> dict[str, Any]:
         if (record := self.folder.record(name)) is not None:
             log.info("build %s: done before", name)
             return record
         started = time.monotonic()
-        self.spark.sparkContext.setJobDescription(f"build {name}")
         record = self.folder.commit(name, work())
         log.info("build %s: %.1f s", name, time.monotonic() - started)
         return record
+
+    def _scan(
+        self, domain_rules: SuffixRules | None, *, weighted: bool
+    ) -> tuple[dict[str, Any], dict[str, Any]]:
+        """Scans under a salt; under another where two hosts share an id."""
+        salt = _FIRST_SALT
+        for attempt in range(1, _SALTS + 1):
+            task = ScanTask(
+                self.folder,
+                self.plan,
+                self.pieces,
+                salt,
+                weighted,
+                self.config.graph.follow_only,
+                domain_rules,
+            )
+            scan = self._stage(f"scan-{attempt}", lambda task=task: self._run_scan(task))  # type: ignore[misc]
+            check_rejected_share(scan, self.config.graph.max_rejected_share)
+            hosts = self._stage(f"hosts-{attempt}", self._gather_hosts)
+            clashes = scan["clashes"] + hosts["clashes"]
+            if not clashes:
+                return scan, hosts
+            log.warning("%d hosts share an id with another under salt %d", clashes, salt)
+            # The next salt is a function of all hosts, in no order: the same however the input is cut.
+            salt = hosts["id_sum"] % (1 << 62)
+        raise SparkrankError(
+            f"host ids: expected distinct 64-bit ids under one of {_SALTS} salts, found {clashes} clashes; "
+            "the input holds names forged against the hash"
+        )
+
+    def _run_scan(self, task: ScanTask) -> dict[str, Any]:
+        with TaskRunner(self.spark, len(self.pieces)) as runner:
+            reports = runner.run(task, "scan of the input")
+        return {
+            "salt": task.salt,
+            **{name: sum(report[name] for report in reports) for name in _SUMMED},
+            **{name: _add_counts([report[name] for report in reports]) for name in _BY_REASON},
+            "edge_pieces": [i for i, report in enumerate(reports) if report["edge_rows"]],
+            "rejected_pieces": [i for i, r in enumerate(reports) if r["rejected"] or r["rejected_hosts"]],
+        }
+
+    def _gather_hosts(self) -> dict[str, Any]:
+        with TaskRunner(self.spark, self.plan.stripes) as runner:
+            reports = runner.run(HostsTask(self.folder, len(self.pieces)), "hosts of stripes")
+        return {name: sum(report[name] for report in reports) for name in ("hosts", "clashes", "id_sum")}
+
+    def _tile(self, scan: dict[str, Any], *, weighted: bool) -> dict[str, Any]:
+        n_tiles = self.plan.stripes * self.plan.build_groups
+        if not scan["edge_pieces"]:
+            return {"tiles": [], "edges": 0}
+        with TaskRunner(self.spark, n_tiles) as runner:
+            task = TileTask(self.folder, self.plan, scan["edge_pieces"], weighted)
+            edges = runner.run(task, "edges of tiles")
+        filled = [divmod(tile, self.plan.build_groups) for tile, count in enumerate(edges) if count]
+        return {"tiles": filled, "edges": sum(edges)}
 
     def _peel(self, tiles: dict[str, Any], *, weighted: bool) -> dict[str, Any]:
         pairs = [(stripe, group) for stripe, group in tiles["tiles"]]
@@ -193,23 +268,30 @@ class _Builder:
         with TaskRunner(self.spark, len(pairs)) as runner:
             return {"cells": pairs, "cell_stamps": runner.run(writer, "edges into cells")}
 
-    def _counts(
-        self, names: dict[str, Any], hosts: dict[str, Any], tiles: dict[str, Any], order: dict[str, Any]
-    ) -> dict[str, Any]:
-        accepted = self.edges.rows - names["rejected_rows"]
-        followed = tiles["edges"] + tiles["duplicates"] + tiles["self_links"]
-        return {
-            "rows": self.edges.rows,
-            "rejected_rows": names["rejected_rows"],
-            "rejected": names["rejected"],
-            "rejected_hosts": names["rejected_hosts"],
-            "not_followed_rows": accepted - followed,
-            "self_link_rows": tiles["self_links"],
-            "merged_rows": tiles["duplicates"],
-            "hosts": hosts["hosts"],
-            "edges": tiles["edges"],
-            "iterated_hosts": order["iterated"],
-        }
+
+def _add_counts(parts: list[dict[str, int]]) -> dict[str, int]:
+    total: dict[str, int] = {}
+    for part in parts:
+        for name, count in part.items():
+            total[name] = total.get(name, 0) + count
+    return dict(sorted(total.items()))
+
+
+def _counts(
+    scan: dict[str, Any], hosts: dict[str, Any], tiles: dict[str, Any], order: dict[str, Any]
+) -> dict[str, Any]:
+    return {
+        "rows": scan["rows"],
+        "rejected_rows": sum(scan["rejected"].values()),
+        "rejected": scan["rejected"],
+        "rejected_hosts": scan["rejected_hosts"],
+        "not_followed_rows": scan["not_followed"],
+        "self_link_rows": scan["self_links"],
+        "merged_rows": scan["edge_rows"] - tiles["edges"],
+        "hosts": hosts["hosts"],
+        "edges": tiles["edges"],
+        "iterated_hosts": order["iterated"],
+    }
 
 
 def _graph(folder: GraphFolder, record: dict[str, Any]) -> Graph:
@@ -221,5 +303,6 @@ def _graph(folder: GraphFolder, record: dict[str, Any]) -> Graph:
         phase_starts=record["phase_starts"],
         core_phase=record["core_phase"],
         cells=[(stripe, group) for stripe, group in record["cells"]],
+        rejected_pieces=record["rejected_pieces"],
         counts=record["counts"],
     )

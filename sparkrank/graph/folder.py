@@ -18,6 +18,18 @@ class GraphFolder:
 
     place: Place
 
+    def scanned_edges(self, piece: int) -> Place:
+        """Ids of a piece's edges, by tile; removed after the build."""
+        return self.place.child("scan", f"{piece:05d}.edges")
+
+    def scanned_hosts(self, piece: int) -> Place:
+        """Ids and names of a piece's hosts, by stripe; removed after the build."""
+        return self.place.child("scan", f"{piece:05d}.hosts")
+
+    def rejected(self, piece: int) -> Place:
+        """Rejected values of a piece, as Parquet."""
+        return self.place.child("rejected", f"{piece:05d}.parquet")
+
     def ids(self, stripe: int) -> Place:
         """Sorted ids of the stripe's hosts."""
         return self.place.child("hosts", f"{stripe:03d}.ids")
@@ -53,10 +65,6 @@ class GraphFolder:
     def cell(self, stripe: int, group: int) -> Place:
         """Packed sections of edges into the stripe from a build group."""
         return self.place.child("cells", f"{stripe:03d}-{group:03d}.cell")
-
-    def scratch(self, name: str) -> Place:
-        """A Spark table that only the build reads."""
-        return self.place.child("scratch", name)
 
     def record(self, stage: str) -> dict[str, Any] | None:
         """What a finished stage recorded, or None."""

@@ -13,9 +13,9 @@ import numpy as np
 from numpy.typing import NDArray
 
 from sparkrank.arrays import read_arrays, write_arrays
-from sparkrank.errors import SparkrankError
 from sparkrank.graph.folder import GraphFolder
 from sparkrank.graph.plan import GridPlan
+from sparkrank.graph.tiles import MAX_LINKS, too_many_links
 from sparkrank.kernels import peel
 from sparkrank.kernels.edges import destinations, sources
 from sparkrank.tasks import TaskRunner
@@ -103,11 +103,12 @@ class Peeling:
             if group == own_group:
                 out_degree += part[f"out-{stripe}"]
                 if self.weighted:
+                    # Each part is below 2^62: a sum that passes it shows before the next addition.
                     out_weight += part[f"weight-{stripe}"].astype(np.int64)
+                    if n and out_weight.max() >= MAX_LINKS:
+                        raise too_many_links()
         if not self.weighted:
             out_weight = out_degree
-        if n and out_weight.min() < 0:
-            raise SparkrankError("links of one host add up beyond 64 bits; expected fewer page links")
         arrays = {"in_degree": in_degree, "out_degree": out_degree, "out_weight": out_weight}
         write_arrays(self.folder.degrees(stripe), arrays)
         codes = peel.first_sinks(np.zeros(n, np.int8), out_degree)

@@ -1,89 +1,64 @@
-"""Accepted edge rows → distinct edges of each tile, by one shuffle of fixed-width ids.
+"""Scanned edges → distinct edges of each tile, by position in their stripes.
 
-A tile gets all rows from one group of source stripes into one destination stripe.  Its task looks the
-ids up in the stripes' sorted ids, merges duplicates, and leaves the tile's part of the degrees beside
-the edges.
+A tile gets all edges from one group of source stripes into one destination stripe.  Its task looks
+the ids up in the stripes' sorted ids, merges duplicates, and leaves the tile's part of the degrees
+beside the edges.
 """
 
 from __future__ import annotations
 
 from dataclasses import dataclass
-from typing import TYPE_CHECKING, Any
+from typing import Any
 
 import numpy as np
-import pyarrow as pa
 from numpy.typing import NDArray
 
 from sparkrank.arrays import read_arrays, write_arrays
-from sparkrank.errors import SparkrankError
+from sparkrank.errors import InputRefused, SparkrankError
 from sparkrank.graph.folder import GraphFolder
-from sparkrank.graph.hosts import id_of, stripe_of
 from sparkrank.graph.plan import GridPlan
-from sparkrank.graph.sinks import write_partitions
 from sparkrank.kernels.edges import Edges, destinations, merge_duplicates, out_totals, pack_keys, sources
 from sparkrank.kernels.edges import split_by_stripe as split_keys
 from sparkrank.kernels.lookup import find_ids
 
-if TYPE_CHECKING:
-    from pyspark.sql import DataFrame
+MAX_LINKS = 2.0**62
+"""Page links that one tile, and one host, may have: their sums must stay exact in 64 bits."""
 
 
-def write_tiles(
-    edges: DataFrame, folder: GraphFolder, plan: GridPlan, salt: int, *, weighted: bool
-) -> dict[str, Any]:
-    """Writes the edges and degrees of every tile.
-
-    Parameters
-    ----------
-    edges : columns ``src``, ``dst`` (canonical hosts of the graph) and, if weighted, ``links`` (long).
-
-    Returns
-    -------
-    The stage's record: ``tiles`` ([stripe, group] of those with edges), ``edges`` (distinct, without
-    self-links), ``self_links`` and ``duplicates`` (rows).
-    """
-    from pyspark.sql import functions as sf
-
-    columns = [id_of(sf.col("src"), salt).alias("src"), id_of(sf.col("dst"), salt).alias("dst")]
-    if weighted:
-        columns.append(sf.col("links"))
-    rows = edges.select(*columns)
-    tile = (
-        stripe_of(sf.col("dst"), plan.stripes) * plan.build_groups
-        + sf.floor(stripe_of(sf.col("src"), plan.stripes) * plan.build_groups / plan.stripes)
-    ).cast("int")
-    n_tiles = plan.stripes * plan.build_groups
-    reports = write_partitions(rows, n_tiles, tile, _TileWriter(folder, plan, weighted), "edges into tiles")
-    totals = {key: sum(report[key] for report in reports.values()) for key in ("rows", "edges", "self_links")}
-    return {
-        "tiles": [divmod(tile, plan.build_groups) for tile, report in reports.items() if report["edges"]],
-        "edges": totals["edges"],
-        "self_links": totals["self_links"],
-        "duplicates": totals["rows"] - totals["self_links"] - totals["edges"],
-    }
+def too_many_links() -> InputRefused:
+    return InputRefused(
+        f"input.edges, column links: expected page links that add up to less than {MAX_LINKS:.2g}, "
+        "found more; mend the counts or set graph.weighting to uniform"
+    )
 
 
 @dataclass(frozen=True)
-class _TileWriter:
+class TileTask:
+    """Writes the edges and degrees of one tile; returns how many edges it has."""
+
     folder: GraphFolder
     plan: GridPlan
+    pieces: list[int]
+    """The pieces that have edges."""
     weighted: bool
 
-    def __call__(self, tile: int, columns: list[pa.ChunkedArray]) -> dict[str, Any]:
+    def __call__(self, tile: int) -> int:
         stripe, group = divmod(tile, self.plan.build_groups)
-        source_ids, destination_ids = columns[0].to_numpy(), columns[1].to_numpy()
-        n_rows = len(source_ids)
-        linking = source_ids != destination_ids
-        n_self = n_rows - int(np.count_nonzero(linking))
-        weights = columns[2].to_numpy() if self.weighted else None
-        columns.clear()
-        if n_self:
-            source_ids, destination_ids = source_ids[linking], destination_ids[linking]
-            weights = None if weights is None else weights[linking]
+        parts: dict[str, list[NDArray[np.int64]]] = {"src": [], "dst": [], "links": []}
+        for piece in self.pieces:
+            found = read_arrays(self.folder.scanned_edges(piece))
+            first, end = found["bounds"][tile : tile + 2].tolist()
+            for name in parts:
+                if name in found:
+                    parts[name].append(found[name][first:end])
+        source_ids, destination_ids = np.concatenate(parts["src"]), np.concatenate(parts["dst"])
+        weights = np.concatenate(parts["links"]) if self.weighted else None
+        if weights is not None and weights.sum(dtype=np.float64) >= MAX_LINKS:
+            raise too_many_links()
         edges = self._merge(stripe, group, source_ids, destination_ids, weights)
         if len(edges.keys):
             self._write(stripe, group, edges)
-        return {"rows": n_rows, "self_links": n_self, "edges": len(edges.keys)}
+        return len(edges.keys)
 
     def _merge(
         self,

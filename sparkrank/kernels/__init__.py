@@ -2,11 +2,13 @@
 
 Read in the order of the data flow:
 
+- ``xxhash``: ids of names; ``stripes``: the stripe of an id
 - ``lookup``: hashed ids to positions in a sorted stripe
 - ``edges``: packed edge keys of one tile: sort, merge duplicates, degrees
 - ``peel``: which hosts a peel round takes away
 - ``diagonals``: one sub-block of edges in jagged diagonal storage
 - ``accumulate``: the multiplication, k columns at once
+- ``extrapolate``: a better state from the last few steps
 - ``mass``: absolute and relative spam mass, and its range over the core's slices
 - ``farms``: closed forms of farm arithmetic
 """

@@ -2,5 +2,6 @@
 
 ``members`` finds the lists' hosts in the graph, ``columns`` says what each column starts from,
 ``pull`` is the multiplication over cells, ``layers`` computes peeled hosts, ``solver`` iterates the
-core, ``reach`` finds what the good core reaches.  ``folder`` names the files.
+core, ``mixing`` extrapolates between its steps, ``reach`` finds what the good core reaches.  ``solve``
+runs them for a run; ``folder`` names the files.
 """

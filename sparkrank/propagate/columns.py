@@ -76,10 +76,7 @@ def start_columns(
     """u of the stripe's hosts at positions [first, end): shape (k, end - first)."""
     start = np.zeros((columns.count, end - first))
     start[0] = 1.0
-    place = folder.members(stripe)
-    if not place.exists():
-        return start
-    members = read_arrays(place)
+    members = read_arrays(folder.members(stripe))
     inside = (members["position"] >= first) & (members["position"] < end)
     position, entry = members["position"][inside] - first, members["entry"][inside]
     core = entry >= 0
@@ -92,8 +89,6 @@ def start_columns(
 def core_members(folder: SolveFolder, stripe: int, n_hosts: int) -> NDArray[np.bool_]:
     """Which of the stripe's hosts are members of the good core, in the solve's order: shape (n_hosts,)."""
     is_core = np.zeros(n_hosts, dtype=np.bool_)
-    place = folder.members(stripe)
-    if place.exists():
-        members = read_arrays(place)
-        is_core[members["position"][members["entry"] >= 0]] = True
+    members = read_arrays(folder.members(stripe))
+    is_core[members["position"][members["entry"] >= 0]] = True
     return is_core

@@ -15,6 +15,10 @@ class SolveFolder:
 
     place: Place
 
+    def list_entries(self) -> Place:
+        """The entries of the reviewed lists with their ids."""
+        return self.place.child("members", "list.arrays")
+
     def members(self, stripe: int) -> Place:
         """Which list entries are hosts of the stripe, and where."""
         return self.place.child("members", f"{stripe:03d}.arrays")
@@ -30,6 +34,10 @@ class SolveFolder:
     def state(self, step: int, stripe: int) -> Place:
         """Flow of the stripe's core hosts after a step."""
         return self.place.child("states", f"{step:05d}", f"{stripe:03d}.arrays")
+
+    def mixed(self, step: int, stripe: int) -> Place:
+        """Flow extrapolated after a step, from which the next step starts."""
+        return self.place.child("states", f"{step:05d}", f"{stripe:03d}-mixed.arrays")
 
     def partial(self, step: int, stripe: int, group: int) -> Place:
         """What one source group adds to the stripe's core hosts in a step; only with several groups."""

@@ -2,13 +2,16 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass
+from functools import partial
 
 import numpy as np
 from numpy.typing import NDArray
 
 from sparkrank.arrays import read_arrays, write_arrays
 from sparkrank.graph.build import Graph
+from sparkrank.places import Place
 from sparkrank.propagate.columns import Columns, start_columns
 from sparkrank.propagate.folder import SolveFolder
 from sparkrank.propagate.pull import phase_size, pull
@@ -39,22 +42,21 @@ class Solve:
 
 
 class Flows:
-    """Flow of finished phases, and of the core after a step; each file is opened once a task."""
+    """Flow of finished phases, and of the core where ``core_state`` has it; each file is opened once."""
 
-    def __init__(self, solve: Solve, step: int | None) -> None:
+    def __init__(self, solve: Solve, core_state: Callable[[int], Place] | None) -> None:
         self._solve = solve
-        self._step = step
+        self._core_state = core_state
         self._open: dict[tuple[int, int], NDArray[np.float64]] = {}
 
     def __call__(self, stripe: int, phase: int) -> NDArray[np.float64]:
         key = (stripe, phase)
         if key not in self._open:
-            folder = self._solve.folder
             if phase == self._solve.graph.core_phase:
-                assert self._step is not None
-                place = folder.state(self._step, stripe)
+                assert self._core_state is not None
+                place = self._core_state(stripe)
             else:
-                place = folder.layer(phase, stripe)
+                place = self._solve.folder.layer(phase, stripe)
             self._open[key] = read_arrays(place)["flow"]
         return self._open[key]
 
@@ -91,5 +93,6 @@ def layer_scores(solve: Solve, stripe: int, phase: int, step: int | None) -> NDA
     score = solve.start(stripe, phase)
     if phase_size(solve.graph, stripe, phase):
         groups = range(solve.graph.plan.build_groups)
-        pull(solve.graph, stripe, phase, range(phase), groups, Flows(solve, step), score)
+        core_state = None if step is None else partial(solve.folder.state, step)
+        pull(solve.graph, stripe, phase, range(phase), groups, Flows(solve, core_state), score)
     return score

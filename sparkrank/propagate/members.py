@@ -11,13 +11,14 @@ import pyarrow.parquet as pq
 
 from sparkrank.arrays import read_arrays, write_arrays
 from sparkrank.graph.build import Graph
-from sparkrank.graph.hosts import id_of, stripe_of
-from sparkrank.graph.sinks import write_partitions
 from sparkrank.kernels.lookup import find_ids
+from sparkrank.kernels.xxhash import xxh64
 from sparkrank.names.lists import HostList, HostLists
+from sparkrank.names.native import octets_of
 from sparkrank.names.rejections import Rejection
 from sparkrank.propagate.folder import SolveFolder
 from sparkrank.shown import shown_value
+from sparkrank.tasks import TaskRunner
 
 if TYPE_CHECKING:
     from pyspark.sql import SparkSession
@@ -43,18 +44,13 @@ class Members:
 
 def match_lists(spark: SparkSession, graph: Graph, folder: SolveFolder, lists: HostLists) -> Members:
     """Finds the lists' hosts in the graph and writes the stripes' member files."""
-    from pyspark.sql import functions as sf
-
     tables = [_entries(lists.core, lambda row: row)]
     if lists.known_spam is not None:
         tables.append(_entries(lists.known_spam, lambda row: -1 - row))
-    rows = spark.createDataFrame(pa.concat_tables(tables)).select(
-        id_of(sf.col("host"), graph.salt).alias("id"), "entry", "host"
-    )
+    _write_list(folder, pa.concat_tables(tables), graph.salt)
     n_stripes = graph.plan.stripes
-    write_partitions(
-        rows, n_stripes, stripe_of(sf.col("id"), n_stripes), _MemberWriter(graph, folder), "list entries"
-    )
+    with TaskRunner(spark, n_stripes) as stripes:
+        stripes.run(_MemberTask(graph, folder), "hosts of the lists")
     found = [_read_entries(folder, stripe) for stripe in range(n_stripes)]
     matched = np.sort(np.concatenate(found)) if found else np.zeros(0, np.int64)
     core_rows, spam_rows = matched[matched >= 0], -1 - matched[matched < 0]
@@ -80,8 +76,6 @@ def _entries(host_list: HostList, entry_of: Any) -> pa.Table:
 
 
 def _read_entries(folder: SolveFolder, stripe: int) -> np.ndarray[Any, np.dtype[np.int64]]:
-    if not folder.members(stripe).exists():
-        return np.zeros(0, np.int64)
     return read_arrays(folder.members(stripe))["entry"]
 
 
@@ -93,24 +87,34 @@ def _unmatched(host_list: HostList, rows: np.ndarray[Any, np.dtype[np.int64]]) -
     return [Rejection(source=source, row_value=shown_value(n), reason=NOT_IN_GRAPH, rows=1) for n in names]
 
 
+def _write_list(folder: SolveFolder, entries: pa.Table, salt: int) -> None:
+    """All entries in one file that every stripe's task reads: lists are small."""
+    octets, offsets = octets_of(pa.concat_arrays(entries["host"].chunks))
+    ids = xxh64(octets, offsets, salt)
+    arrays = {"ids": ids, "entry": entries["entry"].to_numpy(), "offsets": offsets, "bytes": octets}
+    write_arrays(folder.list_entries(), arrays)
+
+
 @dataclass(frozen=True)
-class _MemberWriter:
+class _MemberTask:
+    """Writes which entries are hosts of one stripe."""
+
     graph: Graph
     folder: SolveFolder
 
-    def __call__(self, stripe: int, columns: list[pa.ChunkedArray]) -> dict[str, Any]:
+    def __call__(self, stripe: int) -> None:
         files = self.graph.folder
-        ids, entry = columns[0].to_numpy(), columns[1].to_numpy()
-        place = find_ids(read_arrays(files.ids(stripe))["ids"], ids)
+        listed = read_arrays(self.folder.list_entries())
+        place = find_ids(read_arrays(files.ids(stripe))["ids"], listed["ids"])
         found = np.flatnonzero(place >= 0)
         # An id is a hash: only the name itself says that the host is the same.
         names = pq.read_table(files.names(stripe).path, filesystem=files.names(stripe).filesystem)["host"]
         there = names.take(pa.array(place[found])).to_pylist()
-        asked = columns[2].take(pa.array(found)).to_pylist()
+        octets, offsets = listed["bytes"], listed["offsets"]
+        asked = [octets[offsets[i] : offsets[i + 1]].tobytes().decode() for i in found.tolist()]
         same = np.array([a == b for a, b in zip(there, asked, strict=True)], dtype=np.bool_)
         found = found[same]
         position = read_arrays(files.order(stripe))["position"][place[found]]
         order = np.argsort(position, kind="stable")
-        arrays = {"entry": entry[found][order], "position": position[order]}
+        arrays = {"entry": listed["entry"][found][order], "position": position[order]}
         write_arrays(self.folder.members(stripe), arrays)
-        return {"matched": len(found)}

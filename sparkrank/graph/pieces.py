@@ -1,0 +1,89 @@
+"""The input cut into pieces of work, one scan task each: a function of the files alone."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from dataclasses import dataclass
+from typing import Any
+
+import pyarrow as pa
+import pyarrow.parquet as pq
+
+from sparkrank.inputs import InputFacts
+from sparkrank.places import Place
+
+# A piece of two million rows is a second of work; its output a tile is still a piece worth reading.
+_LEAST_ROWS = 1 << 21
+# Pieces grow with the table so that no tile is put together from more than some hundreds of them …
+_MOST_PIECES = 512
+# … until their columns would fill a worker's memory: 32 M rows are 0.5 GB of ids.
+_MOST_ROWS = 1 << 25
+# Rows decoded at once: their dictionaries and indices take some hundred MB.
+_BATCH_ROWS = 1 << 20
+
+
+@dataclass(frozen=True, kw_only=True)
+class RowRange:
+    """Row groups of one file: those whose first row is in [first, end)."""
+
+    place: Place
+    first: int
+    end: int
+
+
+@dataclass(frozen=True, kw_only=True)
+class Piece:
+    """What one scan task reads: ``columns`` of some row groups."""
+
+    ranges: tuple[RowRange, ...]
+    columns: tuple[str, ...]
+    text_columns: tuple[str, ...]
+
+    def batches(self) -> Iterator[pa.RecordBatch]:
+        """The piece's rows; text columns as Arrow dictionaries."""
+        for part in self.ranges:
+            with part.place.filesystem.open_input_file(part.place.path) as source:
+                file = pq.ParquetFile(source, read_dictionary=list(self.text_columns))
+                groups = _groups_from(file.metadata, part.first, part.end)
+                if groups:
+                    yield from file.iter_batches(
+                        batch_size=_BATCH_ROWS,
+                        row_groups=groups,
+                        columns=list(self.columns),
+                        use_threads=False,
+                    )
+
+
+def plan_pieces(facts: InputFacts, columns: tuple[str, ...], text_columns: tuple[str, ...]) -> list[Piece]:
+    """Pieces that together read every row of the input once."""
+    rows = min(_MOST_ROWS, max(_LEAST_ROWS, facts.rows // _MOST_PIECES))
+    pieces: list[Piece] = []
+    ranges: list[RowRange] = []
+    held = 0
+
+    def close() -> None:
+        nonlocal held
+        if ranges:
+            pieces.append(Piece(ranges=tuple(ranges), columns=columns, text_columns=text_columns))
+        ranges.clear()
+        held = 0
+
+    for file in facts.files:
+        place = facts.place if facts.place.size() is not None else facts.place.below(file.name)
+        for first in range(0, file.rows, rows):
+            end = min(file.rows, first + rows)
+            if held + end - first > rows:
+                close()
+            ranges.append(RowRange(place=place, first=first, end=end))
+            held += end - first
+    close()
+    return pieces
+
+
+def _groups_from(metadata: Any, first: int, end: int) -> list[int]:
+    groups, row = [], 0
+    for group in range(metadata.num_row_groups):
+        if first <= row < end:
+            groups.append(group)
+        row += metadata.row_group(group).num_rows
+    return groups
