@@ -22,7 +22,8 @@ from sparkrank.graph.pieces import Piece
 from sparkrank.graph.plan import GridPlan
 from sparkrank.kernels.stripes import stripe_of
 from sparkrank.kernels.xxhash import xxh64
-from sparkrank.names.native import decide_names, octets_of
+from sparkrank.names.native import decide_names
+from sparkrank.names.octets import octets_of
 from sparkrank.names.suffixes import SuffixRules
 from sparkrank.shown import shown_value
 

@@ -14,7 +14,7 @@ from sparkrank.graph.build import Graph
 from sparkrank.kernels.lookup import find_ids
 from sparkrank.kernels.xxhash import xxh64
 from sparkrank.names.lists import HostList, HostLists
-from sparkrank.names.native import octets_of
+from sparkrank.names.octets import octets_of
 from sparkrank.names.rejections import Rejection
 from sparkrank.propagate.folder import SolveFolder
 from sparkrank.shown import shown_value
