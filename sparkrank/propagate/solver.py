@@ -99,7 +99,7 @@ def _iterate(
     if record is not None:
         log.info("solve: going on after step %d", step)
         # A stop between a step's record and its cleaning left the files that it replaces.
-        solve.folder.drop_step(step - 2)
+        solve.folder.drop_step(step - KEPT_STEPS)
     else:
         stripes.run(_StartTask(solve), "start")
     cells = TaskRunner(spark, plan.stripes * plan.solve_groups) if plan.solve_groups > 1 else None
