@@ -13,6 +13,7 @@ from typing import TYPE_CHECKING, Any
 from sparkrank.config import Config
 from sparkrank.errors import InputRefused, SparkrankError
 from sparkrank.graph.cells import CellWriter
+from sparkrank.graph.counts import add_counts, check_rejected_share, graph_counts
 from sparkrank.graph.folder import GraphFolder
 from sparkrank.graph.hosts import HostsTask
 from sparkrank.graph.peeling import Peeling
@@ -125,20 +126,6 @@ def build_graph(
     return _graph(folder, builder.run(domain_rules, fingerprint))
 
 
-def check_rejected_share(counts: dict[str, Any], allowed: float) -> None:
-    """InputRefused where more than the allowed share of the edge rows was rejected."""
-    rejected, rows = counts["rejected"], counts["rows"]
-    n_rejected = sum(rejected.values())
-    if n_rejected > allowed * rows:
-        most = sorted(rejected.items(), key=lambda item: (-item[1], item[0]))[:3]
-        reasons = ", ".join(f"{reason} {count:,}" for reason, count in most)
-        raise InputRefused(
-            f"input.edges: expected at most {allowed:.4g} of the rows to be rejected "
-            f"(graph.max_rejected_share), found {n_rejected:,} of {rows:,} ({reasons}); "
-            "mend the edge table or allow more"
-        )
-
-
 def _pieces(config: Config, edges: InputFacts, hosts: InputFacts | None) -> list[Piece]:
     """Edge pieces, then pieces of the hosts list."""
     columns, text = ["src", "dst"], ["src", "dst"]
@@ -182,7 +169,7 @@ class _Builder:
                 "rejected_pieces": scan["rejected_pieces"],
                 "phase_starts": order["phase_starts"],
                 "core_phase": order["source_rounds"],
-                "counts": _counts(scan, hosts, tiles, order),
+                "counts": graph_counts(scan, hosts, tiles, order),
             },
         )
         for name in ("scan", "tiles", "peel"):
@@ -233,7 +220,7 @@ class _Builder:
         return {
             "salt": task.salt,
             **{name: sum(report[name] for report in reports) for name in _SUMMED},
-            **{name: _add_counts([report[name] for report in reports]) for name in _BY_REASON},
+            **{name: add_counts([report[name] for report in reports]) for name in _BY_REASON},
             "edge_pieces": [i for i, report in enumerate(reports) if report["edge_rows"]],
             "rejected_pieces": [i for i, r in enumerate(reports) if r["rejected"] or r["rejected_hosts"]],
         }
@@ -267,31 +254,6 @@ class _Builder:
         writer = CellWriter(self.folder, self.plan, pairs, order["phase_starts"])
         with TaskRunner(self.spark, len(pairs)) as runner:
             return {"cells": pairs, "cell_stamps": runner.run(writer, "edges into cells")}
-
-
-def _add_counts(parts: list[dict[str, int]]) -> dict[str, int]:
-    total: dict[str, int] = {}
-    for part in parts:
-        for name, count in part.items():
-            total[name] = total.get(name, 0) + count
-    return dict(sorted(total.items()))
-
-
-def _counts(
-    scan: dict[str, Any], hosts: dict[str, Any], tiles: dict[str, Any], order: dict[str, Any]
-) -> dict[str, Any]:
-    return {
-        "rows": scan["rows"],
-        "rejected_rows": sum(scan["rejected"].values()),
-        "rejected": scan["rejected"],
-        "rejected_hosts": scan["rejected_hosts"],
-        "not_followed_rows": scan["not_followed"],
-        "self_link_rows": scan["self_links"],
-        "merged_rows": scan["edge_rows"] - tiles["edges"],
-        "hosts": hosts["hosts"],
-        "edges": tiles["edges"],
-        "iterated_hosts": order["iterated"],
-    }
 
 
 def _graph(folder: GraphFolder, record: dict[str, Any]) -> Graph:

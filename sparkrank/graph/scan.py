@@ -13,25 +13,20 @@ from typing import Any
 import numpy as np
 import pyarrow as pa
 import pyarrow.compute as pc
-import pyarrow.parquet as pq
 from numpy.typing import NDArray
 
 from sparkrank.arrays import write_arrays
+from sparkrank.graph.batch_columns import encoded, link_counts, not_followed
 from sparkrank.graph.folder import GraphFolder
 from sparkrank.graph.pieces import Piece
 from sparkrank.graph.plan import GridPlan
+from sparkrank.graph.rejected import RejectedValues, write_rejected
 from sparkrank.kernels.stripes import stripe_of
 from sparkrank.kernels.xxhash import xxh64
 from sparkrank.names.native import decide_names
 from sparkrank.names.octets import octets_of
-from sparkrank.names.suffixes import SuffixRules
-from sparkrank.shown import shown_value
+from sparkrank.names.suffixes import SuffixRules, domains_of
 
-BAD_LINKS = "bad_links"
-"""The reason of a row whose ``links`` is null or not positive."""
-
-# A token of rel between white space or commas, after ASCII lower-casing.
-_NOT_FOLLOWED = r"(?:^|[\t\n\v\f\r ,])(?:nofollow|ugc|sponsored)(?:$|[\t\n\v\f\r ,])"
 # Tells two names of one id apart: any other seed will do.
 _CHECK_SEED = 0x5EED
 
@@ -63,29 +58,31 @@ class ScanTask:
         """Rows of the hosts list."""
         names = self._names(batch.column("host"))
         accepted = names.usable[names.index]
-        found.rejected.add_values("hosts.host", names, names.index[~accepted])
+        found.rejected.add_values("hosts.host", names.values, names.reasons, names.index[~accepted])
         found.hosts.add(names, names.index[accepted])
 
     def _add_edges(self, batch: pa.RecordBatch, found: _Found) -> None:
         """Rows of the edge table, each counted once: rejected, not followed, self-link, or an edge."""
         source, destination = self._names(batch.column("src")), self._names(batch.column("dst"))
         source_fits, destination_fits = source.usable[source.index], destination.usable[destination.index]
-        links = _links(batch)
+        links = link_counts(batch)
         links_fit = np.ones(batch.num_rows, np.bool_) if links is None else links > 0
         accepted = source_fits & destination_fits & links_fit
         found.rows += batch.num_rows
         if not accepted.all():
-            found.rejected.add_values("edges.src", source, source.index[~source_fits])
             only_destination = source_fits & ~destination_fits
-            found.rejected.add_values("edges.dst", destination, destination.index[only_destination])
-            only_links = source_fits & destination_fits & ~links_fit
-            found.rejected.add_links(batch, only_links)
+            for name, names, rows in (
+                ("edges.src", source, ~source_fits),
+                ("edges.dst", destination, only_destination),
+            ):
+                found.rejected.add_values(name, names.values, names.reasons, names.index[rows])
+            found.rejected.add_links(batch, source_fits & destination_fits & ~links_fit)
         found.hosts.add(source, source.index[accepted])
         found.hosts.add(destination, destination.index[accepted])
         kept = accepted
-        if self.follow_only and (not_followed := _not_followed(batch)) is not None:
-            found.not_followed += int(np.count_nonzero(accepted & not_followed))
-            kept = accepted & ~not_followed
+        if self.follow_only and (unfollowed := not_followed(batch)) is not None:
+            found.not_followed += int(np.count_nonzero(accepted & unfollowed))
+            kept = accepted & ~unfollowed
         source_ids, destination_ids = source.ids[source.index[kept]], destination.ids[destination.index[kept]]
         linking = source_ids != destination_ids
         found.self_links += len(linking) - int(np.count_nonzero(linking))
@@ -95,27 +92,25 @@ class ScanTask:
             weights = np.ones(batch.num_rows, np.int64) if links is None else links
             found.links.append(weights[kept][linking])
 
-    def _names(self, column: pa.DictionaryArray) -> _Names:
+    def _names(self, column: pa.Array) -> _Names:
         """The distinct values of a column and what they name."""
-        values = column.dictionary
+        values, index = encoded(column)
         decided = decide_names(values)
         hosts = decided.hosts
         if self.domain_rules is not None:
             # A host without a registrable domain is a node of its own.
-            hosts = pc.coalesce(
-                __import__("sparkrank.names.suffixes", fromlist=["x"]).domains_of(hosts, self.domain_rules),
-                hosts,
-            )
+            hosts = pc.coalesce(domains_of(hosts, self.domain_rules), hosts)
         usable = np.append(hosts.is_valid().to_numpy(zero_copy_only=False), False)
-        # A null row gets an index of its own behind the values.
-        index = column.indices.fill_null(len(values)).to_numpy()
         ids = np.append(_hash(hosts, self.salt), 0)
         return _Names(values, hosts, decided.reasons, usable, ids, index)
 
 
 @dataclass(frozen=True)
 class _Names:
-    """Distinct values with their hosts, and the rows as indices into them."""
+    """Distinct values with their hosts, and the rows as indices into them.
+
+    Null rows have the index behind the last value; ``usable`` and ``ids`` have a place for it.
+    """
 
     values: pa.Array
     hosts: pa.StringArray
@@ -158,40 +153,6 @@ class _Hosts:
 
 
 @dataclass
-class _Rejected:
-    """Rejected values with their reasons and the number of rows."""
-
-    counts: dict[tuple[str, str | None, str], int] = field(default_factory=dict)
-
-    def add_values(self, source: str, names: _Names, index: NDArray[np.int32]) -> None:
-        rows = np.bincount(index, minlength=len(names.ids))
-        for at in np.flatnonzero(rows).tolist():
-            if at == len(names.values):
-                value, reason = None, "null"
-            else:
-                value, reason = _text(names.values[at]), names.reasons[at].as_py()
-            self._add(source, value, reason, int(rows[at]))
-
-    def add_links(self, batch: pa.RecordBatch, rows: NDArray[np.bool_]) -> None:
-        if rows.any():
-            values = batch.column("links").filter(pa.array(rows)).value_counts().to_pylist()
-            for one in values:
-                value = None if one["values"] is None else str(one["values"])
-                self._add("edges.links", value, BAD_LINKS, one["counts"])
-
-    def _add(self, source: str, value: str | None, reason: str, rows: int) -> None:
-        key = (source, None if value is None else shown_value(value), reason)
-        self.counts[key] = self.counts.get(key, 0) + rows
-
-    def by_reason(self, table: str) -> dict[str, int]:
-        found: dict[str, int] = {}
-        for (source, _, reason), rows in self.counts.items():
-            if source.startswith(table):
-                found[reason] = found.get(reason, 0) + rows
-        return found
-
-
-@dataclass
 class _Found:
     """What a task has gathered so far."""
 
@@ -202,7 +163,7 @@ class _Found:
     sources: list[NDArray[np.int64]] = field(default_factory=list)
     destinations: list[NDArray[np.int64]] = field(default_factory=list)
     links: list[NDArray[np.int64]] = field(default_factory=list)
-    rejected: _Rejected = field(default_factory=_Rejected)
+    rejected: RejectedValues = field(default_factory=RejectedValues)
     hosts: _Hosts = field(init=False)
 
     def __post_init__(self) -> None:
@@ -218,7 +179,7 @@ class _Found:
         arrays["checks"] = _hash(names, _CHECK_SEED)
         write_arrays(folder.scanned_hosts(number), arrays)
         if self.rejected.counts:
-            _write_rejected(folder, number, self.rejected)
+            write_rejected(folder.rejected(number), self.rejected)
         return {
             "rows": self.rows,
             "edge_rows": n_edges,
@@ -249,48 +210,6 @@ class _Found:
         return len(source)
 
 
-def _write_rejected(folder: GraphFolder, number: int, rejected: _Rejected) -> None:
-    rows = [(*key, count) for key, count in sorted(rejected.counts.items(), key=repr)]
-    columns = list(zip(*rows, strict=True))
-    table = pa.table(
-        {
-            "source": pa.array(columns[0], pa.string()),
-            "row_value": pa.array(columns[1], pa.string()),
-            "reason": pa.array(columns[2], pa.string()),
-            "rows": pa.array(columns[3], pa.int64()),
-        }
-    )
-    sink = pa.BufferOutputStream()
-    pq.write_table(table, sink)
-    folder.rejected(number).write_bytes(sink.getvalue())
-
-
 def _hash(names: pa.Array, seed: int) -> NDArray[np.int64]:
     """xxh64 of each name's bytes; a null's means nothing."""
     return xxh64(*octets_of(names), seed)
-
-
-def _links(batch: pa.RecordBatch) -> NDArray[np.int64] | None:
-    """Links of each row, 0 for null; None where the table does not count links."""
-    if "links" not in batch.schema.names:
-        return None
-    links: NDArray[np.int64] = batch.column("links").cast(pa.int64()).fill_null(0).to_numpy()
-    return links
-
-
-def _not_followed(batch: pa.RecordBatch) -> NDArray[np.bool_] | None:
-    """Rows whose rel says so, in any case of ASCII letters; None without such a column."""
-    if "rel" not in batch.schema.names:
-        return None
-    column = batch.column("rel")
-    text = pc.ascii_lower(column.dictionary.cast(pa.string()))
-    says_so = pc.match_substring_regex(text, _NOT_FOLLOWED).to_numpy(zero_copy_only=False)
-    index = column.indices.fill_null(len(text)).to_numpy()
-    not_followed: NDArray[np.bool_] = np.append(says_so.astype(np.bool_), False)[index]
-    return not_followed
-
-
-def _text(value: pa.Scalar) -> str:
-    octets = value.as_buffer()
-    # 200 characters are shown; the rest of a value of megabytes is not worth decoding.
-    return str(octets.to_pybytes()[:4000].decode("utf-8", "replace"))

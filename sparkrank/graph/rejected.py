@@ -1,0 +1,76 @@
+"""Values of the input that could not be used, counted as they are met."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+
+import numpy as np
+import pyarrow as pa
+import pyarrow.parquet as pq
+from numpy.typing import NDArray
+
+from sparkrank.places import Place
+from sparkrank.shown import shown_value
+
+BAD_LINKS = "bad_links"
+"""The reason of a row whose ``links`` is null or not positive."""
+
+
+@dataclass
+class RejectedValues:
+    """Rejected values with their reasons and the number of rows."""
+
+    counts: dict[tuple[str, str | None, str], int] = field(default_factory=dict)
+
+    def add_values(
+        self, source: str, values: pa.Array, reasons: pa.StringArray, index: NDArray[np.int32]
+    ) -> None:
+        """Rows whose value is rejected, as indices into the values; len(values) is a null."""
+        rows = np.bincount(index, minlength=len(values) + 1)
+        for at in np.flatnonzero(rows).tolist():
+            value = _text(values[at]) if at < len(values) else None
+            reason = "null" if value is None else reasons[at].as_py()
+            self._add(source, value, reason, int(rows[at]))
+
+    def add_links(self, batch: pa.RecordBatch, rows: NDArray[np.bool_]) -> None:
+        if rows.any():
+            values = batch.column("links").filter(pa.array(rows)).value_counts().to_pylist()
+            for one in values:
+                value = None if one["values"] is None else str(one["values"])
+                self._add("edges.links", value, BAD_LINKS, one["counts"])
+
+    def _add(self, source: str, value: str | None, reason: str, rows: int) -> None:
+        key = (source, None if value is None else shown_value(value), reason)
+        self.counts[key] = self.counts.get(key, 0) + rows
+
+    def by_reason(self, table: str) -> dict[str, int]:
+        found: dict[str, int] = {}
+        for (source, _, reason), rows in self.counts.items():
+            if source.startswith(table):
+                found[reason] = found.get(reason, 0) + rows
+        return found
+
+
+def write_rejected(place: Place, rejected: RejectedValues) -> None:
+    """Writes the counts as Parquet, in the columns of ``rejected_rows``."""
+    rows = [(*key, count) for key, count in sorted(rejected.counts.items(), key=repr)]
+    columns = list(zip(*rows, strict=True))
+    table = pa.table(
+        {
+            "source": pa.array(columns[0], pa.string()),
+            "row_value": pa.array(columns[1], pa.string()),
+            "reason": pa.array(columns[2], pa.string()),
+            "rows": pa.array(columns[3], pa.int64()),
+        }
+    )
+    sink = pa.BufferOutputStream()
+    pq.write_table(table, sink)
+    place.write_bytes(sink.getvalue())
+
+
+def _text(value: pa.Scalar) -> str | None:
+    octets = value.as_buffer()
+    if octets is None:
+        return None
+    # 200 characters are shown; the rest of a value of megabytes is not worth decoding.
+    return str(octets.to_pybytes()[:4000].decode("utf-8", "replace"))
