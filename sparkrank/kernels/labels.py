@@ -58,10 +58,7 @@ class LastLabels:
             octet = data[np.clip(position, begin, last)]
             digits &= (octet - np.uint8(_ZERO)) < 10
         names &= ~digits
-        # Dots side by side: both in one host if the first is not the host's last byte.
+        # Of two dots side by side the first ends its host if the second is not in it, too.
         doubled = np.flatnonzero(np.diff(self._dots) == 1)
-        if len(doubled):
-            host = np.searchsorted(self._low, doubled, side="right") - 1
-            within = self._dots[doubled] + 1 < self._stop[host]
-            names[host[within]] = False
+        names[np.searchsorted(self._low, doubled, side="right") - 1] = False
         return names

@@ -113,8 +113,8 @@ class _Block:
         opens_path = self.padded[rest] == _SLASH
         opens_more = np.isin(self.padded[rest], np.frombuffer(b"?#\\", dtype=np.uint8))
         plain &= (rest == self.stop) | opens_path | (is_url & opens_more)
-        # One trailing dot is removed.
-        end = name_end - ((name_end > begin) & (self.padded[name_end - 1] == _DOT))
+        # One trailing dot is removed. Where there is no name, the dot of the value before changes nothing.
+        end = name_end - (self.padded[name_end - 1] == _DOT)
         plain &= self._are_names(begin, end)
         has_path = rest < self.stop
         if (plain & has_path & ~is_url).any():

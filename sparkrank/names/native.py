@@ -7,20 +7,15 @@ IDNA names come back chunk after chunk, so the last ones decided are remembered.
 The plain way never disagrees with `canonical_host` where it answers.
 """
 
-from collections.abc import Iterator
 from dataclasses import dataclass
 from functools import lru_cache
 
 import numpy as np
 import pyarrow as pa
 import pyarrow.compute as pc
-from numpy.typing import NDArray
-from pyspark.sql import Column, DataFrame
-from pyspark.sql import functions as sf
-from pyspark.sql.types import StringType, StructField, StructType
 
 from sparkrank.kernels.plain_hosts import find_plain_hosts
-from sparkrank.names.canonical import MAX_NAME_CHARACTERS, CanonicalName, canonical_host
+from sparkrank.names.canonical import CanonicalName, canonical_host
 from sparkrank.names.octets import octets_of, string_array
 
 # Names and short URLs; with a few hundred bytes a value and its answer, some 30 MB at most.
@@ -59,99 +54,31 @@ def decide_names(values: pa.Array | pa.ChunkedArray) -> DecidedNames:
 def _decide(values: pa.Array) -> DecidedNames:
     data, offsets = octets_of(values)
     found = find_plain_hosts(data, offsets)
-    plain = found.lengths > 0
-    if values.null_count:
-        plain &= pc.is_valid(values).to_numpy(zero_copy_only=False)
+    # A null may have bytes of its own, which mean nothing.
+    valid = values.is_valid().to_numpy(zero_copy_only=False)
+    plain = (found.lengths > 0) & valid
     hosts = string_array(found.data, found.lengths, plain)
     reasons = pa.nulls(len(values), pa.string())
-    if plain.all():
+    odd = np.flatnonzero(~plain)
+    if len(odd) == 0:
         return DecidedNames(hosts=hosts, reasons=reasons)
-    names = list(_odd_names(values, data, offsets, np.flatnonzero(~plain)))
-    odd = pa.array(~plain)
+    names = []
+    octets = data.data
+    rows = (offsets[odd].tolist(), offsets[odd + 1].tolist(), valid[odd].tolist())
+    for begin, end, is_value in zip(*rows, strict=True):
+        names.append(_name_of(str(octets[begin:end], "utf-8", "replace") if is_value else None))
+    is_odd = pa.array(~plain)
     return DecidedNames(
-        hosts=pc.replace_with_mask(hosts, odd, pa.array([name.host for name in names], pa.string())),
-        reasons=pc.replace_with_mask(reasons, odd, pa.array([name.reason for name in names], pa.string())),
+        hosts=pc.replace_with_mask(hosts, is_odd, pa.array([name.host for name in names], pa.string())),
+        reasons=pc.replace_with_mask(reasons, is_odd, pa.array([name.reason for name in names], pa.string())),
     )
 
 
-def _odd_names(
-    values: pa.Array, data: NDArray[np.uint8], offsets: NDArray[np.int64], odd: NDArray[np.int64]
-) -> Iterator[CanonicalName]:
-    # A null may have bytes of its own, which mean nothing.
-    valid = pc.is_valid(values.take(pa.array(odd))) if values.null_count else None
-    for at, (begin, end) in enumerate(zip(offsets[odd].tolist(), offsets[odd + 1].tolist(), strict=True)):
-        if valid is not None and not valid[at].as_py():
-            yield canonical_host(None)
-            continue
-        text = data[begin:end].tobytes().decode("utf-8", "replace")
-        yield _remembered(text) if len(text) < _REMEMBERED_CHARACTERS else canonical_host(text)
+def _name_of(value: str | None) -> CanonicalName:
+    keep = value is None or len(value) < _REMEMBERED_CHARACTERS
+    return _remembered(value) if keep else canonical_host(value)
 
 
 @lru_cache(maxsize=_REMEMBERED_VALUES)
-def _remembered(value: str) -> CanonicalName:
+def _remembered(value: str | None) -> CanonicalName:
     return canonical_host(value)
-
-
-# Possessive quantifiers (`*+`) keep matching linear; bounded input keeps the matcher's recursion bounded.
-# No flags: under (?i) with Unicode folding, the Kelvin sign would pass for a k.
-_LABEL = r"(?![xX][nN]--)[A-Za-z0-9_-]{1,63}+"
-# The last label does not start with a digit: whatever might be an IPv4 number is left to Python.
-_LAST_LABEL = r"(?![xX][nN]--)[A-Za-z_-][A-Za-z0-9_-]{0,62}+"
-_NAME = rf"((?:{_LABEL}\.(?=[A-Za-z0-9_-]))*+{_LAST_LABEL})\.?+"
-
-# Ports of 60000 and more, or with leading zeros beyond four digits, are rare enough for Python.
-_URL = (
-    r"\A(?:(?:[hH][tT][tT][pP][sS]?+|[fF][tT][pP]|[wW][sS][sS]?+):)?+//"
-    rf"{_NAME}(?::(?:[1-5][0-9]{{4}}|[0-9]{{0,4}}))?+(?:[/?#\\]|\z)"
-)
-# A path of printable ASCII without space, `#` and `?`; a value with `//` never gets here.
-_BARE = rf"\A{_NAME}(?::(?:[1-5][0-9]{{4}}|[0-9]{{1,4}}))?+(?:/[!\"$->@-~]*+)?+\z"
-
-
-def plain_host(column: Column) -> Column:
-    """The canonical host of a plain value; null for null and for every value Python has to look at.
-
-    Plain are names of letters, digits, `-`, `_` and dots without `xn--` labels and without a digit at the
-    start of the last label, as bare hosts with an optional port and path or in http, https, ftp, ws and wss
-    URLs without user info. At most the first 253 characters of a value are matched.
-    """
-    # Longer values end in a space, which nothing matches: a name that reaches the cut is left to Python,
-    # so that a name cannot pass for a shorter one, and no name is over the limit.
-    head = sf.when(sf.octet_length(column) <= MAX_NAME_CHARACTERS, column).otherwise(
-        sf.concat(sf.substring(column, 1, MAX_NAME_CHARACTERS), sf.lit(" "))
-    )
-    found = sf.when(sf.contains(column, sf.lit("//")), sf.regexp_extract(head, _URL, 1)).otherwise(
-        sf.regexp_extract(head, _BARE, 1)
-    )
-    # Only ASCII was matched, so lower-casing cannot bring in a character from elsewhere.
-    return sf.lower(sf.nullif(found, sf.lit("")))
-
-
-_NAME_TYPE = StructType([StructField("host", StringType()), StructField("reason", StringType())])
-
-
-def _canonical_names(values: pa.Array) -> pa.Array:
-    hosts: list[str | None] = []
-    reasons: list[str | None] = []
-    for value in values:
-        octets = value.as_buffer()
-        # Spark strings may hold bytes that are not UTF-8; URLs arrive through UTF-8 decoding with U+FFFD.
-        name = canonical_host(None if octets is None else octets.to_pybytes().decode("utf-8", "replace"))
-        hosts.append(name.host)
-        reasons.append(name.reason)
-    return pa.StructArray.from_arrays(
-        [pa.array(hosts, pa.string()), pa.array(reasons, pa.string())], names=["host", "reason"]
-    )
-
-
-def odd_name_map(odd: DataFrame) -> DataFrame:
-    """What every distinct `value` (string) of `odd` names: columns `value`, `host`, `reason`.
-
-    Exactly one of `host` and `reason` (a key of REASONS) is set. A null value is a row of its own, with
-    the reason `null`: join it null-safe or leave it out.
-    """
-    named = sf.arrow_udf(_canonical_names, _NAME_TYPE)  # type: ignore[attr-defined]  # not in pyspark's stubs
-    distinct = odd.select("value").distinct()
-    return distinct.select("value", named(sf.col("value").cast("binary")).alias("name")).select(
-        "value", sf.col("name.host").alias("host"), sf.col("name.reason").alias("reason")
-    )

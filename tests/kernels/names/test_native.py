@@ -117,6 +117,23 @@ def test_alone_and_beside_others_a_value_names_the_same(value: str | None) -> No
         assert answers([other, value, other])[1] == expected, other
 
 
+def test_what_follows_in_memory_leaves_a_value_plain() -> None:
+    values = [
+        "shop.example",
+        ":80",
+        "shop.example/",
+        "//b.example",
+        "http://c.example",
+        "/",
+        "d-",
+        "-e",
+        "xn",
+        "--f",
+    ]
+    expected = ["shop.example", "", "shop.example", "b.example", "c.example", "", "d-", "-e"]
+    assert plain_of(values)[:8] == expected
+
+
 def _hostish() -> st.SearchStrategy[str]:
     letters = st.text(st.sampled_from(string.ascii_letters + string.digits + "-_"), max_size=6)
     odd = st.text(st.sampled_from("ab1.-_:/@%[]\\?# \t\n\x7f\u00ad‍ß．１\u212a"), max_size=4)
