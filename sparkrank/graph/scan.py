@@ -25,7 +25,7 @@ from sparkrank.kernels.stripes import stripe_of
 from sparkrank.kernels.xxhash import xxh64
 from sparkrank.names.native import decide_names
 from sparkrank.names.octets import octets_of
-from sparkrank.names.suffixes import SuffixRules, domains_of
+from sparkrank.names.suffixes import SuffixRules, split_hosts
 
 # Tells two names of one id apart: any other seed will do.
 _CHECK_SEED = 0x5EED
@@ -99,7 +99,7 @@ class ScanTask:
         hosts = decided.hosts
         if self.domain_rules is not None:
             # A host without a registrable domain is a node of its own.
-            hosts = pc.coalesce(domains_of(hosts, self.domain_rules), hosts)
+            hosts = pc.coalesce(split_hosts(hosts, self.domain_rules).domains, hosts)
         usable = np.append(hosts.is_valid().to_numpy(zero_copy_only=False), False)
         ids = np.append(_hash(hosts, self.salt), 0)
         return _Names(values, hosts, decided.reasons, usable, ids, index)

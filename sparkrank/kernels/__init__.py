@@ -2,6 +2,7 @@
 
 Read in the order of the data flow:
 
+- ``plain_hosts``: the hosts of plain names and URLs; ``labels`` and ``cut``: their last labels
 - ``xxhash``: ids of names; ``stripes``: the stripe of an id
 - ``lookup``: hashed ids to positions in a sorted stripe
 - ``edges``: packed edge keys of one tile: sort, merge duplicates, degrees

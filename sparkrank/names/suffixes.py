@@ -12,14 +12,13 @@ from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 from functools import cached_property
 from pathlib import Path
-from typing import Literal
+from typing import Literal, NamedTuple
 
 import numpy as np
 import publicsuffixlist
 import pyarrow as pa
 import pyarrow.compute as pc
-from pyspark.sql import Column, DataFrame
-from pyspark.sql import functions as sf
+from numpy.typing import NDArray
 
 from sparkrank.errors import ConfigError
 from sparkrank.kernels.cut import cut
@@ -162,17 +161,26 @@ def _extra_rule(rule: str, where: str) -> str:
     return prefix + host
 
 
-def domains_of(hosts: pa.Array, rules: SuffixRules) -> pa.StringArray:
-    """Registrable domains of canonical hosts (strings, nulls allowed), null as in `SuffixRules.split`.
+class SplitHosts(NamedTuple):
+    """Public suffixes and registrable domains of n hosts, null where a host has none."""
 
-    One lookup a rule length: the names of L labels are looked up for the hosts' last L labels, and the
-    longest match wins.
+    suffixes: pa.StringArray
+    domains: pa.StringArray
+
+
+def split_hosts(hosts: pa.Array, rules: SuffixRules) -> SplitHosts:
+    """Public suffixes and registrable domains of canonical hosts (strings, nulls allowed).
+
+    Null as in `SuffixRules.split`. One lookup a rule length: the names of L labels are looked up for the
+    hosts' last L labels, and the longest match wins.
     """
-    parts = [_domains(hosts.slice(at, _HOSTS_A_PASS), rules) for at in range(0, len(hosts), _HOSTS_A_PASS)]
-    return pa.concat_arrays(parts) if parts else pa.array([], pa.string())
+    parts = [_split(hosts.slice(at, _HOSTS_A_PASS), rules) for at in range(0, len(hosts), _HOSTS_A_PASS)]
+    if not parts:
+        return SplitHosts(pa.array([], pa.string()), pa.array([], pa.string()))
+    return SplitHosts(*(pa.concat_arrays(columns) for columns in zip(*parts, strict=True)))
 
 
-def _domains(hosts: pa.Array, rules: SuffixRules) -> pa.StringArray:
+def _split(hosts: pa.Array, rules: SuffixRules) -> SplitHosts:
     data, offsets = octets_of(hosts)
     labels = LastLabels(data, offsets)
     count = np.ones(len(hosts), dtype=np.int64)
@@ -187,55 +195,13 @@ def _domains(hosts: pa.Array, rules: SuffixRules) -> pa.StringArray:
         count[at] = np.where(found > 0, found, count[at])
         if "longer" in table.column_names:
             may_match[at] = table["longer"].take(place).fill_null(False).to_numpy()
-    has_domain = labels.n_labels > count
+    is_name = labels.n_labels > 0
     if hosts.null_count:
-        has_domain &= hosts.is_valid().to_numpy(zero_copy_only=False)
-    begin = np.where(has_domain, labels.begin(count + 1), offsets[1:])
-    return string_array(cut(data, offsets, begin, offsets[1:]), offsets[1:] - begin, has_domain)
+        is_name &= hosts.is_valid().to_numpy(zero_copy_only=False)
 
+    def last(wanted: NDArray[np.int64], there: NDArray[np.bool_]) -> pa.StringArray:
+        begin = np.where(there, labels.begin(wanted), offsets[1:])
+        return string_array(cut(data, offsets, begin, offsets[1:]), offsets[1:] - begin, there)
 
-def with_suffix_and_domain(frame: DataFrame, host_column: str, rules: SuffixRules) -> DataFrame:
-    """Add `suffix` and `domain` (strings, null as in `SuffixRules.split`) of canonical hosts to a frame.
-
-    One broadcast join a rule length: the names of L labels are joined on the host's last L labels, and the
-    longest match wins. Beyond two labels the key is null, and costs nothing, unless the last two labels
-    have longer names below them.
-    """
-    host = sf.col(host_column)
-    # Counting dots by length is several times cheaper than splitting.
-    labels = sf.octet_length(host) - sf.octet_length(sf.replace(host, sf.lit("."), sf.lit(""))) + 1
-    is_name = ~(host.startswith("[") | _is_ipv4(host) | _has_empty_label(host))
-    joined = frame
-    found: list[Column] = []
-    for depth, names in rules.tables_by_depth:
-        columns = [f"_suffix_{column}_{depth}" for column in names.column_names]
-        table = frame.sparkSession.createDataFrame(names.rename_columns(columns))
-        key = sf.substring_index(host, ".", -depth)
-        if depth > 2:
-            key = sf.when(sf.col("_suffix_longer_2"), key)
-        joined = joined.join(sf.broadcast(table), key == sf.col(f"_suffix_name_{depth}"), "left")
-        found.insert(0, sf.col(f"_suffix_labels_{depth}"))
-    count = sf.when(is_name, sf.least(sf.coalesce(*found, sf.lit(1)), labels))
-    kept = [sf.col(name) for name in frame.columns]
-    counted = joined.select(*kept, labels.alias("_labels"), count.alias("_suffix_labels"))
-    has_more = sf.col("_suffix_labels") < sf.col("_labels")
-    return counted.select(
-        *kept,
-        _last_labels(host, sf.col("_suffix_labels")).alias("suffix"),
-        sf.when(has_more, _last_labels(host, sf.col("_suffix_labels") + 1)).alias("domain"),
-    )
-
-
-def _is_ipv4(host: Column) -> Column:
-    # In a canonical host only an address ends in a number. Few names get as far as the pattern.
-    last = sf.substring_index(host, ".", -1)
-    return (last < sf.lit(":")) & last.rlike(r"\A[0-9]+\z")
-
-
-def _has_empty_label(host: Column) -> Column:
-    return host.startswith(".") | host.endswith(".") | sf.contains(host, sf.lit(".."))
-
-
-def _last_labels(host: Column, count: Column) -> Column:
-    # The Python function of this name takes no column for the count.
-    return sf.call_function("substring_index", host, sf.lit("."), -count)
+    # A wildcard rule may ask for more labels than a host has: then the host itself is the suffix.
+    return SplitHosts(last(count, is_name), last(count + 1, is_name & (labels.n_labels > count)))

@@ -1,7 +1,7 @@
 """Columns of the solve → the rows of ``host_scores``.
 
-Numpy tasks put a stripe's columns, degrees and names side by side and leave them as Parquet; Spark
-adds public suffix and domain and publishes the table.
+Numpy tasks put a stripe's columns, degrees and names side by side and leave them as Parquet, from which
+Spark publishes the table.
 """
 
 from __future__ import annotations
@@ -16,7 +16,7 @@ from numpy.typing import NDArray
 
 from sparkrank.arrays import read_arrays
 from sparkrank.kernels.mass import Masses, spam_mass
-from sparkrank.names.suffixes import SuffixRules
+from sparkrank.names.suffixes import SuffixRules, split_hosts
 from sparkrank.propagate.columns import core_members
 from sparkrank.propagate.layers import Solve
 from sparkrank.propagate.reach import reached_hosts
@@ -34,19 +34,18 @@ def host_scores(spark: SparkSession, solution: Solution, sweeps: int, rules: Suf
 
     ``sweeps`` is the last sweep of the reach, ``rules`` split the hosts' names.
     """
-    from sparkrank.names.suffixes import with_suffix_and_domain
-
     solve = solution.solve
     with TaskRunner(spark, solve.graph.plan.stripes) as stripes:
-        stripes.run(_ScoreTask(solution, sweeps), "scores of hosts")
+        stripes.run(_ScoreTask(solution, sweeps, rules), "scores of hosts")
     paths = [solve.folder.scores(stripe).uri for stripe in range(solve.graph.plan.stripes)]
-    return with_suffix_and_domain(spark.read.parquet(*paths), "host", rules)
+    return spark.read.parquet(*paths)
 
 
 @dataclass(frozen=True)
 class _ScoreTask:
     solution: Solution
     sweeps: int
+    rules: SuffixRules
 
     def __call__(self, stripe: int) -> None:
         solve = self.solution.solve
@@ -62,9 +61,12 @@ class _ScoreTask:
         n_slices = len(solve.columns.slices)
         slice_trust = np.where(reached, columns[1 : 1 + n_slices], 0.0)
         masses = spam_mass(columns[0], slice_trust, solve.columns.slice_shares, known)
+        split = split_hosts(pa.concat_arrays(names.chunks or [pa.array([], pa.string())]), self.rules)
         table = pa.table(
             {
                 "host": names,
+                "domain": split.domains,
+                "suffix": split.suffixes,
                 "in_degree": degrees["in_degree"],
                 "out_degree": degrees["out_degree"],
                 "pagerank": columns[0] / self.solution.pagerank_sum,

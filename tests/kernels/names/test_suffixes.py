@@ -12,7 +12,7 @@ from hypothesis import strategies as st
 from sparkrank.errors import ConfigError
 from sparkrank.names import suffixes
 from sparkrank.names.canonical import canonical_host
-from sparkrank.names.suffixes import SuffixRules, domains_of
+from sparkrank.names.suffixes import SuffixRules, split_hosts
 
 PACKAGE = Path(publicsuffixlist.__file__).parent
 RULES = SuffixRules.load()
@@ -120,28 +120,33 @@ ODD_HOSTS = [
 ]  # fmt: skip
 
 
-def check_domains(hosts: list[str | None], rules: SuffixRules) -> None:
-    found = domains_of(pa.array(hosts, pa.string()), rules)
-    found.validate(full=True)
-    assert found.type == pa.string()
-    assert found.to_pylist() == [None if host is None else rules.split(host)[1] for host in hosts]
+def check_split(hosts: list[str | None], rules: SuffixRules) -> None:
+    found = split_hosts(pa.array(hosts, pa.string()), rules)
+    for column in found:
+        column.validate(full=True)
+        assert column.type == pa.string()
+    expected = [(None, None) if host is None else rules.split(host) for host in hosts]
+    assert list(zip(*(column.to_pylist() for column in found), strict=True)) == expected
 
 
 @pytest.mark.parametrize("rules", RULE_SETS)
-def test_domains_of_many_hosts_are_those_of_each(rules: SuffixRules, monkeypatch: pytest.MonkeyPatch) -> None:
+def test_split_of_many_hosts_are_those_of_each(rules: SuffixRules, monkeypatch: pytest.MonkeyPatch) -> None:
     around_extra = [
         f"{head}{rule.strip('!*.')}"
         for rule in EXTRA
         for head in ("", "w.", "v.w.", "u.v.w.", "www.", "x.www.")
     ]
     hosts = [*ODD_HOSTS, None, *around_extra, *hosts_around_every_rule(), None, *ODD_HOSTS]
-    check_domains(hosts, rules)
+    check_split(hosts, rules)
     monkeypatch.setattr(suffixes, "_HOSTS_A_PASS", 1_000)
-    check_domains(hosts, rules)
+    check_split(hosts, rules)
     sliced = pa.array(hosts, pa.string()).slice(5, 50)
-    assert domains_of(sliced, rules).to_pylist() == domains_of(pa.array(hosts), rules).to_pylist()[5:55]
+    assert (
+        split_hosts(sliced, rules).domains.to_pylist()
+        == (split_hosts(pa.array(hosts), rules).domains.to_pylist()[5:55])
+    )
     monkeypatch.setattr(suffixes, "_HOSTS_A_PASS", 1)
-    check_domains(hosts[:100], rules)
+    check_split(hosts[:100], rules)
 
 
 @given(
@@ -158,16 +163,17 @@ def test_domains_of_many_hosts_are_those_of_each(rules: SuffixRules, monkeypatch
     ),
     st.sampled_from(RULE_SETS),
 )
-def test_domains_of_made_hosts(hosts: list[str | None], rules: SuffixRules) -> None:
-    check_domains(hosts, rules)
+def test_split_of_made_hosts(hosts: list[str | None], rules: SuffixRules) -> None:
+    check_split(hosts, rules)
 
 
-def test_domains_of_no_hosts() -> None:
-    assert domains_of(pa.array([], pa.string()), RULES).equals(pa.array([], pa.string()))
-    assert domains_of(pa.nulls(3, pa.string()), RULES).equals(pa.nulls(3, pa.string()))
+def test_split_of_no_hosts() -> None:
+    for length in (0, 3):
+        for column in split_hosts(pa.nulls(length, pa.string()), RULES):
+            assert column.equals(pa.nulls(length, pa.string()))
 
 
 def test_the_bytes_of_a_null_name_nothing() -> None:
     behind = pa.array(["a.shop.example", "b.shop.example"]).buffers()[1:]
     hidden = pa.Array.from_buffers(pa.string(), 2, [pa.py_buffer(b"\x02"), *behind])
-    assert domains_of(hidden, RULES).to_pylist() == [None, "shop.example"]
+    assert split_hosts(hidden, RULES).domains.to_pylist() == [None, "shop.example"]
