@@ -46,8 +46,8 @@ def state_before(folder: SolveFolder, step: int, stripe: int) -> Place:
     return folder.state(step - 1, stripe)
 
 
-def mix_states(solve: Solve, stripes: TaskRunner, step: int) -> None:
-    """Writes the mixture of the cycle that ended with ``step``.
+def mix_states(solve: Solve, stripes: TaskRunner, step: int) -> list[dict[str, int]]:
+    """Writes the mixture of the cycle that ended with ``step``; the stamps of its files.
 
     1. each stripe multiplies its residuals with each other
     2. the sums over all stripes give each column's weights
@@ -58,7 +58,7 @@ def mix_states(solve: Solve, stripes: TaskRunner, step: int) -> None:
     for part in parts[1:]:
         total += part
     weights = np.array([extrapolation_weights(products.tolist()) for products in total]).T
-    stripes.run(_MixTask(solve, step, weights), f"after step {step}: mixture")
+    return stripes.run(_MixTask(solve, step, weights), f"after step {step}: mixture")
 
 
 def _cycle(step: int) -> range:
@@ -89,7 +89,8 @@ class _MixTask:
     step: int
     weights: NDArray[np.float64]
 
-    def __call__(self, stripe: int) -> None:
+    def __call__(self, stripe: int) -> dict[str, int]:
         folder = self.solve.folder
         states = [read_arrays(folder.state(step, stripe))["flow"] for step in _cycle(self.step)]
-        write_arrays(folder.mixed(self.step, stripe), {"flow": combine(states, self.weights)})
+        stamp = write_arrays(folder.mixed(self.step, stripe), {"flow": combine(states, self.weights)})
+        return stamp.as_dict()

@@ -108,13 +108,12 @@ def _iterate(
             if step >= max_steps:
                 raise _not_converged(record, tolerance, max_steps)
             started = time.monotonic()
-            if is_mixed_after(step):
-                mix_states(solve, stripes, step)
+            mixed = mix_states(solve, stripes, step) if is_mixed_after(step) else []
             step += 1
             if cells is not None:
                 cells.run(_PartialTask(solve, step), f"step {step}: cells")
             reports = stripes.run(_StepTask(solve, step), f"step {step}")
-            record = solve.folder.commit(f"step-{step:05d}", _step_record(step, reports))
+            record = solve.folder.commit(f"step-{step:05d}", _step_record(step, reports, mixed))
             solve.folder.drop_step(step - KEPT_STEPS)
             _log_step(record, solve.columns.count, time.monotonic() - started)
     finally:
@@ -142,13 +141,19 @@ def _last_step(solve: Solve) -> tuple[int, dict[str, Any] | None]:
 
 
 def _is_whole(solve: Solve, step: int) -> bool:
+    """Whether a step's files, and the mixture that it began from, are what its record says."""
     record = solve.folder.record(f"step-{step:05d}")
-    stamps = enumerate(record["stamps"] if record else [])
-    return all(has_arrays(solve.folder.state(step, stripe), stamp) for stripe, stamp in stamps)
+    if record is None:
+        return False
+    files = [(solve.folder.state(step, stripe), stamp) for stripe, stamp in enumerate(record["stamps"])]
+    files += [
+        (solve.folder.mixed(step - 1, stripe), stamp) for stripe, stamp in enumerate(record["mixed_stamps"])
+    ]
+    return all(has_arrays(place, stamp) for place, stamp in files)
 
 
-def _step_record(step: int, reports: list[dict[str, Any]]) -> dict[str, Any]:
-    """Adds the stripes' reports up, in the order of the stripes."""
+def _step_record(step: int, reports: list[dict[str, Any]], mixed: list[dict[str, int]]) -> dict[str, Any]:
+    """Adds the stripes' reports up, in stripe order; ``mixed`` stamps what the step began from."""
     columns = range(len(reports[0]["largest_change"]))
     return {
         "step": step,
@@ -157,6 +162,7 @@ def _step_record(step: int, reports: list[dict[str, Any]]) -> dict[str, Any]:
         "pagerank_sum": _sum([report["pagerank_sum"] for report in reports]),
         "edges": sum(report["edges"] for report in reports),
         "stamps": [report["stamp"] for report in reports],
+        "mixed_stamps": mixed,
     }
 
 
