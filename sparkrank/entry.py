@@ -14,17 +14,16 @@ import traceback
 from collections.abc import Callable, Iterator, Sequence
 from dataclasses import dataclass, field
 from typing import TYPE_CHECKING, NoReturn
-from urllib.parse import unquote
 
 from sparkrank import errors
 from sparkrank.config import Config, load_config
-from sparkrank.errors import ConfigError, InputRefused, SparkrankError
+from sparkrank.errors import ConfigError, SparkrankError
 from sparkrank.places import Place, resolve
 from sparkrank.publish.attempts import RunFolder, new_attempt_id, utc_now
 from sparkrank.publish.lock import hold_run
 from sparkrank.publish.outcome import Outcome, write_outcome
 from sparkrank.session import check_runtime, master_is_local, open_session, print_error
-from sparkrank.shown import one_line, shown_value
+from sparkrank.shown import one_line
 
 if TYPE_CHECKING:
     from pyspark.sql import SparkSession
@@ -114,7 +113,7 @@ def run_job(
     except SparkrankError as error:
         status, message = error.exit_status, one_line_whole(str(error))
     except Exception as error:
-        status, message, details = _unexpected(job, error, known)
+        status, message, details = _unexpected(job, error)
     if known is None:
         message += "; add --debug for the traceback" if details and not debug else ""
     else:
@@ -225,7 +224,7 @@ def _run(
             context.close()
 
 
-def _unexpected(job: str, error: Exception, known: _Known | None) -> tuple[int, str, str]:
+def _unexpected(job: str, error: Exception) -> tuple[int, str, str]:
     """Status, line and traceback of an error that is no SparkrankError, or that one from a worker."""
     text = str(error)
     # Spark hands a worker's exception over as text; its own kind and words are in there.
@@ -233,25 +232,8 @@ def _unexpected(job: str, error: Exception, known: _Known | None) -> tuple[int, 
         kind = getattr(errors, name, None)
         if isinstance(kind, type) and issubclass(kind, SparkrankError):
             return kind.exit_status, one_line_whole(words), ""
-    if known is not None and (refusal := _unreadable_input(text, known.config)):
-        return InputRefused.exit_status, refusal, ""
     details = "".join(traceback.format_exception(error))
     return 1, f"{job}: unexpected {type(error).__name__}: {one_line(error)}", details
-
-
-def _unreadable_input(text: str, config: Config) -> str | None:
-    """The refusal of an input file that Spark could not read behind its good footer, else None."""
-    found = re.search(r"\[FAILED_READ_FILE\S*\] Encountered error while reading file (\S+)", text)
-    if found is None:
-        return None
-    file = unquote(found.group(1).rstrip("."))
-    for name, given in (("edges", config.input.edges), ("hosts", config.input.hosts)):
-        if given and file.startswith(unquote(resolve(given).uri)):
-            return (
-                f"input.{name}: expected files that can be read to their end, "
-                f"found damage in {shown_value(file)}; write that file again"
-            )
-    return None
 
 
 def _report(job: str, known: _Known, status: int, message: str, details: str) -> tuple[str, int]:

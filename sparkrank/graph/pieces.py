@@ -9,8 +9,10 @@ from typing import Any
 import pyarrow as pa
 import pyarrow.parquet as pq
 
+from sparkrank.errors import InputRefused
 from sparkrank.inputs import InputFacts
 from sparkrank.places import Place
+from sparkrank.shown import one_line, shown_value
 
 # A piece of two million rows is a second of work; its output a tile is still a piece worth reading.
 _LEAST_ROWS = 1 << 21
@@ -33,25 +35,36 @@ class RowRange:
 
 @dataclass(frozen=True, kw_only=True)
 class Piece:
-    """What one scan task reads: ``columns`` of some row groups."""
+    """What one scan task reads: ``columns`` of some row groups of the input ``source`` (its setting)."""
 
+    source: str
     ranges: tuple[RowRange, ...]
     columns: tuple[str, ...]
     text_columns: tuple[str, ...]
 
     def batches(self) -> Iterator[pa.RecordBatch]:
-        """The piece's rows; text columns as Arrow dictionaries."""
+        """The piece's rows, text columns as Arrow dictionaries; InputRefused for a damaged file."""
         for part in self.ranges:
-            with part.place.filesystem.open_input_file(part.place.path) as source:
-                file = pq.ParquetFile(source, read_dictionary=list(self.text_columns))
-                groups = _groups_from(file.metadata, part.first, part.end)
-                if groups:
-                    yield from file.iter_batches(
-                        batch_size=_BATCH_ROWS,
-                        row_groups=groups,
-                        columns=list(self.columns),
-                        use_threads=False,
-                    )
+            try:
+                yield from self._batches(part)
+            except (OSError, pa.ArrowException) as error:
+                # The check before Java reads footers only; pages can be damaged behind a good one.
+                raise InputRefused(
+                    f"{self.source}: expected files that can be read to their end, found damage in "
+                    f"{shown_value(str(part.place))} ({one_line(error)}); write that file again"
+                ) from error
+
+    def _batches(self, part: RowRange) -> Iterator[pa.RecordBatch]:
+        with part.place.filesystem.open_input_file(part.place.path) as source:
+            file = pq.ParquetFile(source, read_dictionary=list(self.text_columns))
+            groups = _groups_from(file.metadata, part.first, part.end)
+            if groups:
+                yield from file.iter_batches(
+                    batch_size=_BATCH_ROWS,
+                    row_groups=groups,
+                    columns=list(self.columns),
+                    use_threads=False,
+                )
 
 
 def plan_pieces(facts: InputFacts, columns: tuple[str, ...], text_columns: tuple[str, ...]) -> list[Piece]:
@@ -64,7 +77,10 @@ def plan_pieces(facts: InputFacts, columns: tuple[str, ...], text_columns: tuple
     def close() -> None:
         nonlocal held
         if ranges:
-            pieces.append(Piece(ranges=tuple(ranges), columns=columns, text_columns=text_columns))
+            piece = Piece(
+                source=facts.source, ranges=tuple(ranges), columns=columns, text_columns=text_columns
+            )
+            pieces.append(piece)
         ranges.clear()
         held = 0
 
