@@ -77,21 +77,18 @@ def test_killed_and_started_again_from_another_folder(finished, tmp_path) -> Non
 
 @pytest.mark.slow
 @pytest.mark.parametrize(
-    "pattern",
+    ("pattern", "files"),
     [
-        "work/graphs/*/names.json",
-        "work/graphs/*/hosts.json",
-        "work/graphs/*/tiles.json",
-        "work/graphs/*/order.json",
-        "work/solves/*/records/step-00002.json",
-        "work/solves/*/records/solution.json",
-        "out/steps/*/score_hosts.json",
-        "out/spam_candidates/run_id=*/attempt=*",
+        *(("work/graphs/*/*.json", stage) for stage in range(1, 6)),
+        ("work/solves/*/records/step-00002.json", 1),
+        ("work/solves/*/records/solution.json", 1),
+        ("out/steps/*/score_hosts.json", 1),
+        ("out/spam_candidates/run_id=*/attempt=*", 1),
     ],
 )
-def test_killed_anywhere_the_next_run_ends_the_same(finished, tmp_path, pattern) -> None:
+def test_killed_anywhere_the_next_run_ends_the_same(finished, tmp_path, pattern, files) -> None:
     desk = own_desk(finished, tmp_path)
-    start_and_kill(desk, tmp_path, lambda: any(tmp_path.glob(pattern)))
+    start_and_kill(desk, tmp_path, lambda: len(list(tmp_path.glob(pattern))) >= files)
     done = desk.start_process(cwd=tmp_path)
     assert done.returncode == 0, done.stderr
     assert desk.digests() == finished.digests()

@@ -42,7 +42,7 @@ def test_no_usable_edge_left(spark, tmp_path, capsys) -> None:
     town.write_edges(tmp_path / "edges.parquet", town.SELF + town.NOT_FOLLOWED)
     line = (
         "input.edges: expected links between different hosts, found none in 3 rows (0 rejected, "
-        "1 self-links, the rest not followed); check the columns src, dst and rel"
+        "1 self-links, 2 not followed); check the columns src, dst and rel"
     )
     refused(Desk.at(tmp_path), spark, capsys, line)
 
@@ -72,8 +72,14 @@ def test_a_page_that_cannot_be_read(spark, tmp_path, capsys) -> None:
     town.write_town(tmp_path)
     path = tmp_path / "edges.parquet"
     damage_first_page(path)
-    line = (
-        f"input.edges: expected files that can be read to their end, found damage in file://{path}; "
-        "write that file again"
+    desk = Desk.at(tmp_path)
+    assert desk.start("run_pipeline", "--quiet", session=spark) == 3
+    line = capsys.readouterr().err
+    # In between stand the reader's own words.
+    assert line.startswith(
+        f"sparkrank: input.edges: expected files that can be read to their end, found damage in {path} ("
     )
-    refused(Desk.at(tmp_path), spark, capsys, line)
+    assert line.endswith("); write that file again\n")
+    assert line.count("\n") == 1
+    assert desk.visible() == []
+    assert desk.outcomes()[-1]["exit_status"] == 3
