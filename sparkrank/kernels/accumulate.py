@@ -35,9 +35,9 @@ def accumulate(section: Section, flow: NDArray[np.float64], out: NDArray[np.floa
         if section.weights is not None:
             np.multiply(gathered, section.weights, out=gathered)
         if n_short:
-            out[j][rows[:n_short]] += _sum_diagonals(gathered, section.diagonals)
+            _add_at(out[j], rows[:n_short], _sum_diagonals(gathered, section.diagonals))
         if len(section.long_starts):
-            out[j][rows[n_short:]] += np.add.reduceat(gathered[first_long:], section.long_starts)
+            _add_at(out[j], rows[n_short:], np.add.reduceat(gathered[first_long:], section.long_starts))
 
 
 def _sum_diagonals(gathered: NDArray[np.float64], diagonals: NDArray[np.int64]) -> NDArray[np.float64]:
@@ -48,3 +48,10 @@ def _sum_diagonals(gathered: NDArray[np.float64], diagonals: NDArray[np.int64]) 
         sums[:count] += gathered[start : start + count]
         start += count
     return sums
+
+
+def _add_at(column: NDArray[np.float64], rows: NDArray[np.intp], sums: NDArray[np.float64]) -> None:
+    """Adds the sums to their rows, each row once."""
+    there = column.take(rows, mode="clip")
+    there += sums
+    column[rows] = there
