@@ -1,0 +1,242 @@
+"""Which hosts are candidates, in which order, and what is said against each."""
+
+import math
+from collections.abc import Iterator
+from typing import Any
+
+import pyarrow.parquet as pq
+import pytest
+
+from sparkrank.config import Candidates
+from sparkrank.evidence.candidates import spam_candidates
+from sparkrank.evidence.cautions import (
+    BARE_SUFFIX,
+    FEW_SLICES,
+    NOT_REACHED,
+    ONE_SLICE,
+    THIN_CORE,
+    CoreStrength,
+    core_strength,
+)
+from sparkrank.places import resolve
+from sparkrank.publish.attempts import RunFolder, new_attempt_id
+from sparkrank.publish.lock import hold_run
+from sparkrank.publish.write import publish_table
+from sparkrank.tables import HOST_SCORES, SPAM_CANDIDATES, spark_schema
+
+DEFAULTS = Candidates(min_scaled_pagerank=10.0, min_relative_mass=0.5)
+STRONG = CoreStrength(start=67.0, hidden_boosters=12.0, slices=3)
+COVERED = {"host": "core.good.test", "suffix": "good.test", "is_core": True, "relative_mass": -5.0}
+
+
+def score(host: str, **values: Any) -> dict[str, Any]:
+    """A row of host_scores that passes the default thresholds, reached, by a well covered suffix."""
+    row = {
+        "host": host,
+        "domain": host,
+        "suffix": "good.test",
+        "in_degree": 20,
+        "out_degree": 3,
+        "pagerank": 0.01,
+        "scaled_pagerank": 100.0,
+        "trust": 10.0,
+        "known_spam_mass": None,
+        "absolute_mass": 90.0,
+        "relative_mass": 0.9,
+        "relative_mass_low": 0.8,
+        "relative_mass_high": 0.95,
+        "is_core": False,
+        "core_reached": True,
+    }
+    return row | values
+
+
+def candidates(
+    spark,
+    rows: list[dict[str, Any]],
+    thresholds: Candidates = DEFAULTS,
+    strength: CoreStrength = STRONG,
+    covered: bool = True,
+) -> list[dict[str, Any]]:
+    """The candidates in the order of their ranks; a core member covers the suffix unless told otherwise."""
+    given = [*rows, score(**COVERED)] if covered else rows
+    found = spam_candidates(frame(spark, given), thresholds, strength)
+    return [row.asDict() for row in found.orderBy("rank").collect()]
+
+
+def frame(spark, rows: list[dict[str, Any]]):
+    names = HOST_SCORES.column_names
+    return spark.createDataFrame(
+        [tuple(row[name] for name in names) for row in rows], spark_schema(HOST_SCORES)
+    )
+
+
+@pytest.fixture
+def many_partitions(spark) -> Iterator[None]:
+    settings = {"spark.sql.shuffle.partitions": "5", "spark.sql.adaptive.enabled": "false"}
+    before = {key: spark.conf.get(key) for key in settings}
+    for key, value in settings.items():
+        spark.conf.set(key, value)
+    yield
+    for key, value in before.items():
+        spark.conf.set(key, value)
+
+
+# Cautions by host at the default thresholds; the hosts' scores differ from a plain one's as given.
+CAUTIONS: dict[str, tuple[dict[str, Any], list[str]]] = {
+    "plain.test": ({"known_spam_mass": 3.5, "in_degree": 2**40}, []),
+    "unreached.test": ({"core_reached": False}, [NOT_REACHED]),
+    # The threshold is "at least": a low mass at it stays a candidate.
+    "low-at-tau.test": ({"relative_mass_low": 0.5}, []),
+    "low-below-tau.test": ({"relative_mass_low": math.nextafter(0.5, 0)}, [ONE_SLICE]),
+    "no-range.test": ({"relative_mass_low": None, "relative_mass_high": None}, []),
+    "bare.test": ({"suffix": "bare.test"}, [BARE_SUFFIX]),
+    "192.0.2.7": ({"suffix": None, "domain": None}, [BARE_SUFFIX]),
+    # Unreached, no slice matters; what is said is said in one order.
+    "all.test": (
+        {"core_reached": False, "suffix": "bare.test", "relative_mass_low": 0.1},
+        [NOT_REACHED, BARE_SUFFIX],
+    ),
+    "two.test": ({"relative_mass_low": 0.1, "suffix": "bare.test"}, [ONE_SLICE, BARE_SUFFIX]),
+    "at-both.test": ({"scaled_pagerank": 10.0, "relative_mass": 0.5, "relative_mass_low": 0.5}, []),
+}
+NO_CANDIDATES = [
+    score("below-rho.test", scaled_pagerank=math.nextafter(10.0, 0), relative_mass=1.0),
+    score("below-tau.test", scaled_pagerank=1e6, relative_mass=math.nextafter(0.5, 0)),
+    score("member.test", is_core=True),
+]
+
+
+@pytest.fixture(scope="module")
+def at_defaults(spark) -> dict[str, dict[str, Any]]:
+    """Candidates by host at the default thresholds."""
+    rows = [score(host, **values) for host, (values, _) in CAUTIONS.items()]
+    return {row["host"]: row for row in candidates(spark, [*rows, *NO_CANDIDATES])}
+
+
+def test_both_thresholds_are_at_least_and_members_are_left_out(at_defaults) -> None:
+    assert set(at_defaults) == set(CAUTIONS)
+
+
+@pytest.mark.parametrize("host", CAUTIONS)
+def test_each_caution_at_its_boundary(at_defaults, host) -> None:
+    assert at_defaults[host]["cautions"] == CAUTIONS[host][1]
+
+
+@pytest.mark.parametrize("host", CAUTIONS)
+def test_scores_are_taken_over_unchanged(at_defaults, host) -> None:
+    given = score(host, **CAUTIONS[host][0])
+    assert {name: at_defaults[host][name] for name in given} == given
+
+
+def test_a_threshold_far_below_zero_lists_every_host_of_enough_pagerank_by_priority(spark) -> None:
+    """relative mass · log10(1 + absolute mass), half of it unreached; relative mass where none is gained."""
+    rows = [
+        score("small.test", relative_mass=0.9, absolute_mass=9.0),
+        score("large.test", relative_mass=0.9, absolute_mass=999.0),
+        score("unknown.test", relative_mass=1.0, absolute_mass=999.0, core_reached=False),
+        score("none.test", relative_mass=0.0, absolute_mass=0.0),
+        score("negative-unknown.test", relative_mass=-3.0, absolute_mass=-300.0, core_reached=False),
+        score("negative.test", relative_mass=-2.0, absolute_mass=-200.0),
+        score("far-below.test", relative_mass=-999_999.0, absolute_mass=-1e8, scaled_pagerank=10.0),
+        score("below-rho.test", scaled_pagerank=9.9),
+        score("member.test", is_core=True),
+    ]
+    found = candidates(spark, rows, Candidates(min_scaled_pagerank=10.0, min_relative_mass=-1e6))
+    expected = {
+        "large.test": 0.9 * 3,
+        "unknown.test": 1.0 * 3 / 2,
+        "small.test": 0.9,
+        "none.test": 0.0,
+        "negative.test": -2.0,
+        "negative-unknown.test": -3.0,
+        "far-below.test": -999_999.0,
+    }
+    assert [row["host"] for row in found] == list(expected)
+    assert [row["priority"] for row in found] == pytest.approx(list(expected.values()), rel=1e-14)
+    assert [row["rank"] for row in found] == [1, 2, 3, 4, 5, 6, 7]
+
+
+def test_equal_priorities_order_by_host_over_all_partitions(spark, many_partitions) -> None:
+    rows = [
+        score(f"{name}{i:02d}.test", absolute_mass=mass)
+        for i in range(30)
+        for name, mass in (("b", 9.0), ("a", 99.0))
+    ]
+    found = candidates(spark, rows[::-1])
+    assert [row["host"] for row in found] == [
+        *(f"a{i:02d}.test" for i in range(30)),
+        *(f"b{i:02d}.test" for i in range(30)),
+    ]
+    assert [row["rank"] for row in found] == list(range(1, 61))
+
+
+@pytest.mark.parametrize(("hosts", "cautions"), [(100, []), (101, [BARE_SUFFIX])])
+def test_a_suffix_with_less_than_a_tenth_of_its_even_share_is_bare(spark, hosts, cautions) -> None:
+    """20 members over 200 hosts: a suffix of 100 hosts would have 10, and has 1."""
+    thin = {"suffix": "thin.test", "scaled_pagerank": 1.0}
+    rows = [score("candidate.thin.test", suffix="thin.test")]
+    rows += [score(f"h{i}.thin.test", **thin, is_core=i == 0) for i in range(hosts - 1)]
+    rows += [score(f"h{i}.good.test", scaled_pagerank=1.0, is_core=i < 19) for i in range(100)]
+    (row,) = candidates(spark, rows, covered=False)
+    assert (row["host"], row["cautions"]) == ("candidate.thin.test", cautions)
+
+
+def test_what_speaks_against_the_core_is_on_every_candidate(spark) -> None:
+    weak = CoreStrength(start=1e5, hidden_boosters=1000.0, slices=1)
+    rows = [score("one.test"), score("two.test", core_reached=False)]
+    found = candidates(spark, rows, strength=weak)
+    assert {row["host"]: row["cautions"] for row in found} == {
+        "one.test": [FEW_SLICES, THIN_CORE],
+        "two.test": [NOT_REACHED, FEW_SLICES, THIN_CORE],
+    }
+
+
+@pytest.mark.parametrize(
+    ("hidden", "slices", "cautions"),
+    [
+        (999.9, 2, []),
+        (1000.0, 2, [THIN_CORE]),
+        (None, 2, []),
+        (0.0, 1, [FEW_SLICES]),
+        (None, 0, [FEW_SLICES]),
+    ],
+)
+def test_boundaries_of_a_weak_core(hidden, slices, cautions) -> None:
+    assert CoreStrength(start=1.0, hidden_boosters=hidden, slices=slices).cautions == cautions
+
+
+def strength(n_hosts: int, n_core: int, min_relative_mass: float = 0.5) -> CoreStrength:
+    return core_strength(
+        good_share=0.85,
+        n_hosts=n_hosts,
+        n_core=n_core,
+        slices=2,
+        damping=0.85,
+        min_relative_mass=min_relative_mass,
+    )
+
+
+def test_the_farm_that_a_core_link_hides() -> None:
+    """k = (cJ / (d(1 - tau)) - 1) / c with d = 10: the method's own examples (recomputed by hand)."""
+    small = strength(80_000, 1_000)
+    assert small.start == pytest.approx(68, rel=1e-12)
+    assert small.hidden_boosters == pytest.approx(12, abs=0.5)
+    large = strength(335_000_000, 5_000)
+    assert large.hidden_boosters == pytest.approx(11_400, rel=2e-3)
+    assert (small.cautions, large.cautions) == ([], [THIN_CORE])
+    # A thousand boosters are reached at J = 851 · 5 / .85, with one member at N = 5889.3.
+    assert (strength(5889, 1).cautions, strength(5890, 1).cautions) == ([], [THIN_CORE])
+    # No farm is over a threshold of 1.
+    assert strength(10**9, 1, min_relative_mass=1.0).hidden_boosters is None
+
+
+def test_no_candidates_are_an_empty_table(spark, tmp_path) -> None:
+    output = resolve(str(tmp_path))
+    found = spam_candidates(frame(spark, [*NO_CANDIDATES, score(**COVERED)]), DEFAULTS, STRONG)
+    with hold_run(output, "run-1") as lock:
+        run = RunFolder(output=output, run_id="run-1", attempt_id=new_attempt_id(), lock=lock)
+        entry = publish_table(found, SPAM_CANDIDATES, run)
+    assert (entry.rows, [file.rows for file in entry.files]) == (0, [0])
+    schema = pq.read_schema(output.below(entry.files[0].path).local_path)
+    assert tuple(schema.names) == SPAM_CANDIDATES.column_names
