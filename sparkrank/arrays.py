@@ -71,6 +71,11 @@ def read_static_arrays(place: Place) -> dict[str, NDArray[Any]]:
     return read_arrays(place)
 
 
+def narrow(counts: NDArray[Any]) -> NDArray[Any]:
+    """The same counts (>= 0) in the fewest bytes; most hosts have small ones."""
+    return counts.astype(np.min_scalar_type(int(counts.max(initial=0))))
+
+
 def has_arrays(place: Place, stamp: Mapping[str, int]) -> bool:
     """Whether the file is there with the size and the checksum it was written with."""
     if place.size() != stamp["size"]:

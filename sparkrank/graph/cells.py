@@ -71,7 +71,7 @@ class CellWriter:
         stripe, group = self.tiles[number]
         tile = read_arrays(self.folder.tile(stripe, group))
         bounds = tile["bounds"]
-        position = read_arrays(self.folder.order(stripe))["position"]
+        position = self._positions(stripe)
         placed: list[PlacedSection] = []
         for at, source_stripe in enumerate(self.plan.stripes_of_build_group(group)):
             part = slice(int(bounds[at]), int(bounds[at + 1]))
@@ -79,12 +79,15 @@ class CellWriter:
             if not len(keys):
                 continue
             weights = tile["weights"][part] if "weights" in tile else None
-            source_position = read_arrays(self.folder.order(source_stripe))["position"]
+            source_position = self._positions(source_stripe)
             edges = (position[destinations(keys)], source_position[sources(keys)], weights)
             placed += self._sections(stripe, source_stripe, *edges)
         placed.sort(key=lambda one: one[:4])
         stamp = write_cell(self.folder.cell(stripe, group), placed)
         return {"bytes": stamp.size, "crc32": stamp.crc32}
+
+    def _positions(self, stripe: int) -> NDArray[np.int64]:
+        return read_arrays(self.folder.order(stripe))["position"].astype(np.int64)
 
     def _sections(
         self,

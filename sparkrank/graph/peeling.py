@@ -12,7 +12,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from sparkrank.arrays import read_arrays, write_arrays
+from sparkrank.arrays import narrow, read_arrays, write_arrays
 from sparkrank.graph.folder import GraphFolder
 from sparkrank.graph.plan import GridPlan
 from sparkrank.graph.tiles import MAX_LINKS, too_many_links
@@ -107,9 +107,9 @@ class Peeling:
                     out_weight += part[f"weight-{stripe}"].astype(np.int64)
                     if n and out_weight.max() >= MAX_LINKS:
                         raise too_many_links()
-        if not self.weighted:
-            out_weight = out_degree
-        arrays = {"in_degree": in_degree, "out_degree": out_degree, "out_weight": out_weight}
+        arrays = {"in_degree": narrow(in_degree), "out_degree": narrow(out_degree)}
+        if self.weighted:
+            arrays["out_weight"] = narrow(out_weight)
         write_arrays(self.folder.degrees(stripe), arrays)
         codes = peel.first_sinks(np.zeros(n, np.int8), out_degree)
         write_arrays(self.folder.peeled("sink1", stripe), {"codes": codes})
@@ -206,7 +206,10 @@ class _Order:
         by_phase = np.argsort(phase, kind="stable")
         position = np.empty(len(codes), dtype=np.int64)
         position[by_phase] = np.arange(len(codes))
-        out_weight = read_arrays(folder.degrees(stripe))["out_weight"][by_phase]
-        write_arrays(folder.order(stripe), {"position": position, "out_weight": out_weight})
+        degrees = read_arrays(folder.degrees(stripe))
+        # Where edges weigh 1, a host's weight is its degree.
+        out_weight = degrees["out_weight" if self.peeling.weighted else "out_degree"][by_phase]
+        arrays = {"position": position.astype(np.uint32), "out_weight": out_weight}
+        write_arrays(folder.order(stripe), arrays)
         n_phases = self.source_rounds + self.sink_rounds + 1
         return [int(start) for start in np.searchsorted(phase[by_phase], np.arange(n_phases + 1))]

@@ -13,7 +13,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from sparkrank.arrays import read_arrays, write_arrays
+from sparkrank.arrays import narrow, read_arrays, write_arrays
 from sparkrank.errors import InputRefused, SparkrankError
 from sparkrank.graph.folder import GraphFolder
 from sparkrank.graph.plan import GridPlan
@@ -87,15 +87,15 @@ class TileTask:
             arrays["weights"] = edges.weights
         write_arrays(self.folder.tile(stripe, group), arrays)
         n_destinations = len(read_arrays(self.folder.ids(stripe))["ids"])
-        degrees = {"in": _narrow(np.bincount(destinations(edges.keys), minlength=n_destinations))}
+        degrees = {"in": narrow(np.bincount(destinations(edges.keys), minlength=n_destinations))}
         for at, source_stripe in enumerate(stripes):
             part = slice(bounds[at], bounds[at + 1])
             n_hosts = len(read_arrays(self.folder.ids(source_stripe))["ids"])
             source = sources(edges.keys[part])
-            degrees[f"out-{source_stripe}"] = _narrow(out_totals(source, None, n_hosts))
+            degrees[f"out-{source_stripe}"] = narrow(out_totals(source, None, n_hosts))
             if edges.weights is not None:
                 totals = out_totals(source, edges.weights[part], n_hosts)
-                degrees[f"weight-{source_stripe}"] = _narrow(totals)
+                degrees[f"weight-{source_stripe}"] = narrow(totals)
         write_arrays(self.folder.tile_degrees(stripe, group), degrees)
 
 
@@ -104,8 +104,3 @@ def _positions(sorted_ids: NDArray[np.int64], ids: NDArray[np.int64]) -> NDArray
     if len(found) and found.min() < 0:
         raise SparkrankError("an edge names a host that the graph does not have; remove the work folder")
     return found
-
-
-def _narrow(counts: NDArray[np.int64]) -> NDArray[Any]:
-    """The same counts in the fewest bytes; most hosts of a tile have none or a few."""
-    return counts.astype(np.min_scalar_type(int(counts.max(initial=0))))

@@ -114,7 +114,7 @@ class _MemberTask:
         asked = [octets[offsets[i] : offsets[i + 1]].tobytes().decode() for i in found.tolist()]
         same = np.array([a == b for a, b in zip(there, asked, strict=True)], dtype=np.bool_)
         found = found[same]
-        position = read_arrays(files.order(stripe))["position"][place[found]]
+        position = read_arrays(files.order(stripe))["position"][place[found]].astype(np.int64)
         order = np.argsort(position, kind="stable")
         arrays = {"entry": listed["entry"][found][order], "position": position[order]}
         write_arrays(self.folder.members(stripe), arrays)
