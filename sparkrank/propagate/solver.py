@@ -35,8 +35,8 @@ class Solution:
     """A finished solve.
 
     ``error_bounds[j]``: no host's column j is further from the exact value than this times the host's
-    PageRank.  ``l1_bounds[j]``: the sum of all hosts' errors, as a share of N·(1-c) teleport.
-    ``pagerank_sum`` is the sum of all hosts' scaled PageRank.
+    PageRank.  ``l1_bounds[j]``: at least the sum of all hosts' errors divided by N/(1-c), which is all
+    scaled PageRank of a graph without leaks.  ``pagerank_sum`` is the sum of all hosts' scaled PageRank.
     """
 
     solve: Solve
