@@ -10,7 +10,7 @@ from __future__ import annotations
 from collections.abc import Callable, Iterable, Iterator
 from typing import TYPE_CHECKING, Any
 
-from sparkrank.errors import SparkrankError
+from sparkrank.errors import InputRefused, SparkrankError
 
 if TYPE_CHECKING:
     from pyspark import RDD
@@ -68,7 +68,11 @@ class _NamedTask:
         for number in numbers:
             try:
                 yield self._task(number)
+            except InputRefused:
+                raise  # its one line is for the user, and names the place in the input itself
             except Exception as error:
+                # One line: what the driver shows of a worker's error ends at the first break.
+                text = " ".join(str(error).split())
                 raise SparkrankError(
-                    f"{self._what}, task {number}: {type(error).__name__}: {error}"
+                    f"{self._what}, task {number}: {type(error).__name__}: {text}"
                 ) from error

@@ -1,88 +1,123 @@
 """The digest of a table's ordered rows: equal for equal rows in equal order, however they are cut.
 
 Every row is hashed with its position in the table, and the hashes are combined by exclusive or.
-That needs no order among tasks, so Spark computes it natively in one scan, while the position makes
-the order count. Two lanes of 64 bits make an accidental match negligible; this is no protection
+That needs no order among tasks, so a task a file computes its part, while the position makes the
+order count. Two lanes of 64 bits make an accidental match negligible; this is no protection
 against somebody who forges rows, which the SHA-256 of the files is for.
 """
 
 from collections.abc import Sequence
+from dataclasses import dataclass
 
-from pyspark.sql import Column, SparkSession
-from pyspark.sql import functions as sf
+import numpy as np
+import pyarrow as pa
+import pyarrow.parquet as pq
+from numpy.typing import NDArray
 
-from sparkrank.errors import SparkrankError
+from sparkrank.kernels.xxhash import xxh64
+from sparkrank.names.octets import octets_of
+from sparkrank.places import Place
 from sparkrank.publish.entries import FileEntry
-from sparkrank.tables import ColumnType, TableSpec, spark_schema
+from sparkrank.tables import ColumnType, TableSpec
 
-_LANES = (0, 1)
-_FILE, _ROW, _START = "__file", "__row", "__start"
+_Hashes = NDArray[np.uint64]
+
+_LANES = (0x9E3779B97F4A7C15, 0xD1B54A32D192ED03)
+# Weyl constants of the splitmix64 generator: steps that never repeat within 2^64.
+_STEP = np.uint64(0x9E3779B97F4A7C15)
+_NULL = np.uint64(0x5851F42D4C957F2D)
+_BATCH_ROWS = 1 << 17
 
 
-def digest_ordered_rows(
-    spark: SparkSession, folder_uri: str, files: Sequence[FileEntry], table: TableSpec
-) -> str:
-    """The digest of the written files, read back in the order of `files`.
+@dataclass(frozen=True, kw_only=True)
+class FileRows:
+    """What one file adds to its table's digest, and its nulls by column where none may be."""
 
-    Checks in the same scan that as many rows are read as the files' footers count and that no column
-    has nulls that the declaration excludes; SparkrankError otherwise.
-    """
-    starts, rows = [], 0
+    rows: int
+    lanes: tuple[int, ...]
+    nulls: dict[str, int]
+
+
+def digest_file(place: Place, first_row: int, table: TableSpec) -> FileRows:
+    """Reads one file whose rows begin at position `first_row` of the table."""
+    lanes = np.zeros(len(_LANES), np.uint64)
+    nulls = {column.name: 0 for column in table.columns if not column.nullable}
+    position = first_row
+    with place.filesystem.open_input_file(place.path) as source:
+        file = pq.ParquetFile(source)
+        batches = file.iter_batches(_BATCH_ROWS, columns=list(table.column_names), use_threads=False)
+        for batch in batches:
+            hashes = _row_hashes(batch, table, nulls)
+            at = np.arange(position, position + batch.num_rows, dtype=np.uint64)
+            for i, lane in enumerate(_LANES):
+                lanes[i] ^= np.bitwise_xor.reduce(_mixed(hashes ^ _mixed(at * _STEP + np.uint64(lane))))
+            position += batch.num_rows
+    return FileRows(rows=position - first_row, lanes=tuple(int(lane) for lane in lanes), nulls=nulls)
+
+
+def combine(parts: Sequence[FileRows]) -> str:
+    """The digest of a table from the parts of its files."""
+    words = [0] * len(_LANES)
+    for part in parts:
+        words = [word ^ lane for word, lane in zip(words, part.lanes, strict=True)]
+    return "xxh64x2:" + "".join(f"{word:016x}" for word in words)
+
+
+def digest_ordered_rows(output: Place, files: Sequence[FileEntry], table: TableSpec) -> str:
+    """The digest of a table from its files, in their order: what a reader holds a manifest against."""
+    parts, position = [], 0
     for file in files:
-        starts.append((file.path.rpartition("/")[2], rows))
-        rows += file.rows
-    positions = spark.createDataFrame(starts, f"{_FILE} string, {_START} long")
-    written = (
-        spark.read.schema(spark_schema(table))
-        .parquet(folder_uri)
-        .select(
-            "*",
-            sf.col("_metadata.file_name").alias(_FILE),
-            sf.col("_metadata.row_index").alias(_ROW),
-        )
-        .join(sf.broadcast(positions), _FILE)
-    )
-    position = sf.col(_START) + sf.col(_ROW)
-    lanes = [sf.bit_xor(_row_hash(lane, position, table)).alias(f"lane {lane}") for lane in _LANES]
-    never_null = [column for column in table.columns if not column.nullable]
-    nulls = [
-        sf.count_if(_is_null(column.name, column.type)).alias(f"null {column.name}") for column in never_null
-    ]
-    # Names with a blank, which no column has.
-    found = written.agg(sf.count(sf.lit(1)).alias("all rows"), *lanes, *nulls).first()
-    assert found is not None  # an aggregate without groups has one row
-    if found["all rows"] != rows:
-        raise SparkrankError(
-            f"table {table.name} at {folder_uri}: expected {rows} rows by the files' footers; "
-            f"found {found['all rows']} when reading them; run again"
-        )
-    for column in never_null:
-        nulls_found = found[f"null {column.name}"]
-        if nulls_found:
-            raise SparkrankError(
-                f"table {table.name}: expected no nulls in column {column.name}; "
-                f"found {nulls_found} rows with one; this is a fault of the program, report it"
-            )
-    # No rows, no hashes: the exclusive or of nothing is null to Spark and zero to us.
-    words = [(found[f"lane {lane}"] or 0) & 0xFFFF_FFFF_FFFF_FFFF for lane in _LANES]
-    return f"xxh64x2:{words[0]:016x}{words[1]:016x}"
+        parts.append(digest_file(output.below(file.path), position, table))
+        position += parts[-1].rows
+    return combine(parts)
 
 
-def _row_hash(lane: int, position: Column, table: TableSpec) -> Column:
-    """Hash of lane, position and values. Spark's hash passes over nulls, so each value is preceded by
-    whether it is null, and lists by their length: moving either changes the hash."""
-    parts = [sf.lit(lane), position]
-    for column in table.columns:
-        value = sf.col(column.name)
-        parts.append(value.isNull())
-        if column.type is ColumnType.STRINGS:
-            parts.append(sf.size(value))
-        parts.append(value)
-    return sf.xxhash64(*parts)
+def _row_hashes(batch: pa.RecordBatch, table: TableSpec, nulls: dict[str, int]) -> _Hashes:
+    """One hash a row; counts nulls in columns that must have none."""
+    rows = np.zeros(batch.num_rows, np.uint64)
+    for at, column in enumerate(table.columns):
+        values = batch.column(column.name)
+        if column.name in nulls:
+            nulls[column.name] += values.null_count
+            if column.type is ColumnType.STRINGS:
+                nulls[column.name] += values.flatten().null_count
+        hashes = _value_hashes(values, column.type)
+        if values.null_count:
+            hashes = np.where(values.is_valid().to_numpy(zero_copy_only=False), hashes, _NULL)
+        # The column's number goes in, so that values that move to another column are noticed.
+        place = np.full(1, at + 1, np.uint64) * _STEP
+        rows = _mixed(np.bitwise_xor(rows, hashes + place))
+    return rows
 
 
-def _is_null(name: str, kind: ColumnType) -> Column:
-    value = sf.col(name)
+def _value_hashes(values: pa.Array, kind: ColumnType) -> _Hashes:
+    """A hash of each value; of a null's place anything."""
+    if kind is ColumnType.STRING:
+        return xxh64(*octets_of(values), 0).view(np.uint64)
     if kind is ColumnType.STRINGS:
-        return value.isNull() | sf.exists(value, lambda item: item.isNull())
-    return value.isNull()
+        return _list_hashes(values)
+    numbers = values.fill_null(False if kind is ColumnType.BOOLEAN else 0)
+    if kind is ColumnType.DOUBLE:
+        doubles: NDArray[np.float64] = numbers.to_numpy()
+        return _mixed(doubles.view(np.uint64))
+    integers: NDArray[np.int64] = numbers.cast(pa.int64()).to_numpy()
+    return _mixed(integers.view(np.uint64))
+
+
+def _list_hashes(values: pa.Array) -> _Hashes:
+    """Items by their hash and place in the list, summed, with the number of items."""
+    lengths = values.value_lengths().fill_null(0).to_numpy().astype(np.int64)
+    items = values.flatten()
+    starts = np.cumsum(lengths) - lengths
+    place = np.arange(len(items), dtype=np.int64) - np.repeat(starts, lengths)
+    placed = xxh64(*octets_of(items), 0).view(np.uint64) + place.view(np.uint64) * _STEP
+    ends = np.zeros(len(items) + 1, np.uint64)
+    np.cumsum(_mixed(placed), out=ends[1:])
+    return _mixed(ends[starts + lengths] - ends[starts] + lengths.view(np.uint64))
+
+
+def _mixed(words: _Hashes) -> _Hashes:
+    """Every bit of the result depends on every bit of the word (splitmix64's finish)."""
+    words = (words ^ (words >> np.uint64(30))) * np.uint64(0xBF58476D1CE4E5B9)
+    words = (words ^ (words >> np.uint64(27))) * np.uint64(0x94D049BB133111EB)
+    return words ^ (words >> np.uint64(31))

@@ -15,7 +15,7 @@ from pyspark.sql import functions as sf
 from sparkrank.errors import SparkrankError
 from sparkrank.places import Place
 from sparkrank.publish.attempts import RunFolder
-from sparkrank.publish.digest import digest_ordered_rows
+from sparkrank.publish.digest import FileRows, combine, digest_file
 from sparkrank.publish.entries import FileEntry, TableEntry
 from sparkrank.tables import TableSpec, spark_schema
 
@@ -27,8 +27,7 @@ def publish_table(df: DataFrame, table: TableSpec, run: RunFolder) -> TableEntry
 
     1. Columns and types are checked against the declaration, which also gives their descriptions.
     2. Rows are sorted over all files: read in name order, the files are the table in order.
-    3. Each file is described in a task (rows, bytes, SHA-256).
-    4. The ordered rows are read back for their digest.
+    3. A task a file reads it back: bytes, SHA-256, its rows' part of the table's digest.
 
     SparkrankError if a column is missing or of another type, a null is where none may be, or fewer or
     more rows are read back than went in.
@@ -37,14 +36,16 @@ def publish_table(df: DataFrame, table: TableSpec, run: RunFolder) -> TableEntry
     name = run.table_name(table.name)
     folder = run.output.below(name)
     rows_in = _write_sorted(_declared_columns(df, table), table, folder)
-    files = _describe_files(df, run.output, name)
-    rows = sum(file.rows for file in files)
+    written = _read_back(df, run.output, name, table)
+    rows = sum(file.rows for file, _ in written)
     if rows != rows_in:
         raise SparkrankError(
             f"table {table.name} at {folder}: expected the {rows_in} rows that were written; "
             f"found {rows} in its files; run again"
         )
-    digest = digest_ordered_rows(df.sparkSession, folder.uri, files, table)
+    _check_nulls(table, [part for _, part in written])
+    files = tuple(file for file, _ in written)
+    digest = combine([part for _, part in written])
     _log.info(
         "%s: %s rows in %d files written, %.1f s",
         table.name,
@@ -84,21 +85,38 @@ def _write_sorted(df: DataFrame, table: TableSpec, folder: Place) -> int:
     return int(counted.get["rows"])
 
 
-def _describe_files(df: DataFrame, output: Place, name: str) -> tuple[FileEntry, ...]:
-    """The data files in name order, which is row order; hashed in tasks, since tables can be large."""
+def _read_back(df: DataFrame, output: Place, name: str, table: TableSpec) -> list[tuple[FileEntry, FileRows]]:
+    """The data files in name order, which is row order; read in tasks, since tables can be large."""
     paths = [
         f"{name}/{file.name}"
         for file in output.below(name).list_files()
         # Hadoop keeps checksums in hidden files beside the data on local disks.
         if not file.name.startswith((".", "_"))
     ]
+    starts, position = [], 0
+    for path in paths:
+        starts.append((path, position))
+        place = output.below(path)
+        position += int(pq.read_metadata(place.path, filesystem=place.filesystem).num_rows)
     context = df.sparkSession.sparkContext
-    described = context.parallelize(paths, max(1, len(paths))).map(functools.partial(_describe, output))
-    return tuple(described.collect())
+    described = context.parallelize(starts, max(1, len(starts)))
+    return described.map(functools.partial(_describe, output, table)).collect()
 
 
-def _describe(output: Place, path: str) -> FileEntry:
+def _describe(output: Place, table: TableSpec, start: tuple[str, int]) -> tuple[FileEntry, FileRows]:
+    path, first_row = start
     place = output.below(path)
     stamp = place.stamp()
-    rows = int(pq.read_metadata(place.path, filesystem=place.filesystem).num_rows)
-    return FileEntry(path=path, rows=rows, bytes=stamp.size, digest="sha256:" + stamp.checksum)
+    part = digest_file(place, first_row, table)
+    entry = FileEntry(path=path, rows=part.rows, bytes=stamp.size, digest="sha256:" + stamp.checksum)
+    return entry, part
+
+
+def _check_nulls(table: TableSpec, parts: list[FileRows]) -> None:
+    for column in table.columns:
+        found = sum(part.nulls.get(column.name, 0) for part in parts)
+        if found:
+            raise SparkrankError(
+                f"table {table.name}: expected no nulls in column {column.name}; "
+                f"found {found} rows with one; this is a fault of the program, report it"
+            )

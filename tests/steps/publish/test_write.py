@@ -141,9 +141,8 @@ def test_the_position_counts(spark, run, tmp_path) -> None:
     finally:
         spark.conf.set("spark.sql.adaptive.enabled", "true")
     assert [file.rows for file in entry.files] == [1, 1]
-    folder = run.output.below(attempt.table_name("hosts_seen"))
-    assert digest_ordered_rows(spark, folder.uri, entry.files, TABLE) == entry.digest
-    assert digest_ordered_rows(spark, folder.uri, entry.files[::-1], TABLE) != entry.digest
+    assert digest_ordered_rows(run.output, entry.files, TABLE) == entry.digest
+    assert digest_ordered_rows(run.output, entry.files[::-1], TABLE) != entry.digest
 
 
 def test_ties_in_the_order_are_broken_by_the_other_columns(spark, run) -> None:
@@ -203,7 +202,7 @@ def test_lost_rows_are_noticed(spark, run, monkeypatch) -> None:
     """A file that a store loses between the write and the listing."""
     from sparkrank.publish import write
 
-    describe = write._describe_files
-    monkeypatch.setattr(write, "_describe_files", lambda *given: describe(*given)[:0])
+    read_back = write._read_back
+    monkeypatch.setattr(write, "_read_back", lambda *given: read_back(*given)[:0])
     with pytest.raises(SparkrankError, match="expected the 3 rows that were written; found 0 in its files"):
         publish(spark, rows_of(3), run)
