@@ -97,16 +97,16 @@ class Engine:
         from sparkrank.propagate.members import match_lists
 
         core = self._lists.core.hosts
+        members = match_lists(self._spark, self.graph, folder, self._lists)
         if n_columns == 1:
-            nothing = np.zeros(core.num_rows)
+            # PageRank alone: core members start in column 0, as every host does.
             return Columns(
                 slices=(),
                 slice_shares=(),
-                column_of_entry=nothing.astype(np.int64),
-                start_of_entry=nothing,
+                column_of_entry=np.zeros(core.num_rows, np.int64),
+                start_of_entry=np.ones(core.num_rows),
                 has_known_spam=False,
             )
-        members = match_lists(self._spark, self.graph, folder, self._lists)
         slices = plan_slices(members.weight_of, n_columns - 1)
         return plan_columns(
             core["slice"].to_pylist(),
