@@ -244,8 +244,8 @@ class _Builder:
         pairs = [(stripe, group) for stripe, group in tiles["tiles"]]
         peeling = Peeling(self.folder, self.plan, pairs, weighted)
         with (
-            TaskRunner(self.spark, self.plan.stripes) as stripes,
-            TaskRunner(self.spark, len(pairs)) as cells,
+            TaskRunner(self.spark, self.plan.stripes, even=True) as stripes,
+            TaskRunner(self.spark, len(pairs), even=True) as cells,
         ):
             return peeling.run(stripes, cells)
 

@@ -19,6 +19,8 @@ from numpy.typing import NDArray
 
 # Added to the diagonal of the scaled normal equations: above their rounding, below what matters.
 _RIDGE = 1e-13
+# Pieces of all residuals of a column together fit a core's cache.
+_PIECE_HOSTS = 1 << 13
 
 
 def residual_products(residuals: Sequence[NDArray[np.float64]]) -> NDArray[np.float64]:
@@ -32,14 +34,17 @@ def residual_products(residuals: Sequence[NDArray[np.float64]]) -> NDArray[np.fl
     -------
     shape (k, m, m), symmetric.
     """
-    m, k = len(residuals), len(residuals[0])
-    products = np.empty((k, m, m))
+    m, (k, n) = len(residuals), residuals[0].shape
+    products = np.zeros((k, m, m))
     for j in range(k):
-        for a in range(m):
-            for b in range(a + 1):
-                # A sum of products, not a dot: BLAS may add in another order on another machine.
-                product = np.add.reduce(residuals[a][j] * residuals[b][j])
-                products[j, a, b] = products[j, b, a] = product
+        for first in range(0, n, _PIECE_HOSTS):
+            pieces = [residual[j, first : first + _PIECE_HOSTS] for residual in residuals]
+            for a in range(m):
+                for b in range(a + 1):
+                    # A sum of products, not a dot: BLAS may add in another order on another machine.
+                    products[j, a, b] += np.add.reduce(pieces[a] * pieces[b])
+    for a in range(m):
+        products[:, :a, a] = products[:, a, :a]
     return products
 
 

@@ -49,7 +49,7 @@ def match_lists(spark: SparkSession, graph: Graph, folder: SolveFolder, lists: H
         tables.append(_entries(lists.known_spam, lambda row: -1 - row))
     _write_list(folder, pa.concat_tables(tables), graph.salt)
     n_stripes = graph.plan.stripes
-    with TaskRunner(spark, n_stripes) as stripes:
+    with TaskRunner(spark, n_stripes, even=True) as stripes:
         stripes.run(_MemberTask(graph, folder), "hosts of the lists")
     found = [_read_entries(folder, stripe) for stripe in range(n_stripes)]
     matched = np.sort(np.concatenate(found)) if found else np.zeros(0, np.int64)

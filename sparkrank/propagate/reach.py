@@ -109,22 +109,17 @@ class _ReachSweep:
         else:
             reached = reached_hosts(solve, stripe, core, self.sweep - 1).copy()
             _add_reached(solve, stripe, core, range(core, core + 1), self.sweep - 1, reached)
-            self._settle(stripe, reached)
+            if solve.graph.plan.stripes == 1:
+                self._settle(reached)
         write_arrays(solve.folder.reached(self.sweep, stripe), {"reached": reached})
         return int(np.count_nonzero(reached))
 
-    def _settle(self, stripe: int, reached: NDArray[np.bool_]) -> None:
-        """Follows links within the stripe to their end: a long chain needs no sweep a link."""
+    def _settle(self, reached: NDArray[np.bool_]) -> None:
+        """Follows links to their end where there is one stripe: a long chain needs no sweep a link."""
         solve, core = self.solve, self.solve.graph.core_phase
-        group = solve.graph.plan.build_group_of(stripe)
-
-        def own(from_stripe: int, phase: int) -> NDArray[np.float64]:
-            if from_stripe != stripe:
-                return np.zeros((1, phase_size(solve.graph, from_stripe, phase)))
-            return reached[None, :].astype(np.float64)
-
         known = -1
         while known < (known := int(np.count_nonzero(reached))):
             inflow = np.zeros((1, len(reached)))
-            pull(solve.graph, stripe, core, range(core, core + 1), range(group, group + 1), own, inflow)
+            flow = reached[None, :].astype(np.float64)
+            pull(solve.graph, 0, core, range(core, core + 1), range(1), lambda *_, flow=flow: flow, inflow)
             reached |= inflow[0] > 0

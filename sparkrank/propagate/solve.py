@@ -78,7 +78,7 @@ def solve_hosts(spark: SparkSession, config: Config, graph: Graph, lists: HostLi
     solve = Solve(graph, folder, columns, config.solve.damping)
     log.info("solve: %d columns: %s", columns.count, ", ".join(columns.names))
     solution = solve_columns(spark, solve, tolerance=config.solve.tolerance, max_steps=config.solve.max_steps)
-    with TaskRunner(spark, graph.plan.stripes) as stripes:
+    with TaskRunner(spark, graph.plan.stripes, even=True) as stripes:
         reached = find_reached(solve, stripes)
     return SolvedHosts(
         solution=solution,

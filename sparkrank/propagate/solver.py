@@ -61,7 +61,7 @@ def solve_columns(spark: SparkSession, solve: Solve, *, tolerance: float, max_st
     if (done := solve.folder.record("solution")) is not None:
         log.info("solve: done before, %d steps", done["steps"])
         return Solution(solve=solve, **done)
-    with TaskRunner(spark, graph.plan.stripes) as stripes:
+    with TaskRunner(spark, graph.plan.stripes, even=True) as stripes:
         first = _prepare(solve, stripes)
         record = _iterate(spark, solve, stripes, tolerance, max_steps)
         sums = [*first["layer_sums"], record["pagerank_sum"]]
@@ -102,7 +102,7 @@ def _iterate(
         solve.folder.drop_step(step - KEPT_STEPS)
     else:
         stripes.run(_StartTask(solve), "start")
-    cells = TaskRunner(spark, plan.stripes * plan.solve_groups) if plan.solve_groups > 1 else None
+    cells = TaskRunner(spark, plan.stripes * plan.solve_groups, even=True) if plan.solve_groups > 1 else None
     try:
         while record is None or max(record["largest_change"]) > tolerance:
             if step >= max_steps:

@@ -35,7 +35,7 @@ def host_scores(spark: SparkSession, solution: Solution, sweeps: int, rules: Suf
     ``sweeps`` is the last sweep of the reach, ``rules`` split the hosts' names.
     """
     solve = solution.solve
-    with TaskRunner(spark, solve.graph.plan.stripes) as stripes:
+    with TaskRunner(spark, solve.graph.plan.stripes, even=True) as stripes:
         stripes.run(_ScoreTask(solution, sweeps, rules), "scores of hosts")
     paths = [solve.folder.scores(stripe).uri for stripe in range(solve.graph.plan.stripes)]
     return spark.read.parquet(*paths)
