@@ -145,6 +145,8 @@ def score(context: JobContext, inputs: RunInputs) -> StepRecord:
     facts = {"graph": graph.counts, "core": solved.core_facts(), "columns": solved.column_facts()}
     record = StepRecord(step="score_hosts", fingerprint=fingerprint, tables=tables, facts=facts)
     commit_step(context.run, record)
+    # The table has it all now, and the states of a solve are many times a graph's size.
+    solved.solution.solve.folder.place.delete_tree()
     return record
 
 

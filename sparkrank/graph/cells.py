@@ -21,9 +21,13 @@ from sparkrank.kernels.diagonals import Section, make_section
 from sparkrank.kernels.edges import destinations, sources
 from sparkrank.places import Place
 
-# Sources of a sub-block: 2^16 offsets fit 16 bits and their 0.5 MB a column fit a core's cache.
+# 2^16 offsets fit 16 bits, and their 0.5 MB a column fit a core's cache with room for the sums …
 _SUB_BLOCK_SOURCES = 1 << 16
-# Sub-blocks widen until they hold this many edges on average: a thin section costs more in calls.
+# … but every row of a section costs a scattered addition: sub-blocks widen to 2 MB a column, a core's
+# whole cache, while rows have fewer edges than this on average …
+_RUN_EDGES = 4
+_WIDE_SUB_BLOCK_SOURCES = 1 << 18
+# … and further while a section has fewer edges than numpy's calls are worth.
 _SUB_BLOCK_EDGES = 1 << 17
 
 # Columns of a cell's table; "at" is an index into the pool the section's values lie in.
@@ -128,12 +132,9 @@ def _cut(
     n_sources: int,
 ) -> Iterator[tuple[int, int, Section]]:
     """Cuts edges of one pair of phases into sub-blocks of sources."""
-    span = _SUB_BLOCK_SOURCES
-    while span < n_sources and len(source) * span < _SUB_BLOCK_EDGES * n_sources:
-        span *= 2
-    span = min(span, n_sources)
-    block, offset = np.divmod(source, span)
     n_rows = int(destination.max()) + 1
+    span = _sub_block_span(len(source), n_rows, n_sources)
+    block, offset = np.divmod(source, span)
     # One key a (block, destination, offset): at most sources x destinations of a stripe, below 2^56.
     key = (block * n_rows + destination) * span + offset
     if weights is None:
@@ -150,6 +151,19 @@ def _cut(
             chosen = None if weights is None else weights[part]
             section = make_section(destination[part], offset[part], chosen)
             yield number * span, min(span, n_sources - number * span), section
+
+
+def _sub_block_span(n_edges: int, n_rows: int, n_sources: int) -> int:
+    """Sources of a sub-block: about equal ones, narrow enough for a cache, wide enough to pay."""
+    span = _SUB_BLOCK_SOURCES
+    while span < n_sources:
+        edges = n_edges * span / n_sources
+        short_runs = edges < _RUN_EDGES * n_rows and span < _WIDE_SUB_BLOCK_SOURCES
+        if not short_runs and edges >= _SUB_BLOCK_EDGES:
+            break
+        span *= 2
+    n_blocks = -(-n_sources // span)
+    return -(-n_sources // n_blocks)
 
 
 def write_cell(place: Place, placed: list[PlacedSection]) -> Any:

@@ -11,14 +11,13 @@ from dataclasses import asdict, dataclass
 
 from sparkrank.kernels.edges import MAX_GROUP_STRIPES
 
-# A destination stripe of about four million rows keeps two cores evenly busy from 10 M edges on and
-# sorts in a few hundred MB.
-_ROWS_PER_STRIPE = 1 << 22
-# State traffic grows by one copy a destination stripe and two a source group: stripes first, to 32.
+# Stripes grow as the square root of the rows, from one at four million: wide stripes make long runs of
+# equal destination, which are cheaper to sum, and every stripe reads a copy of the state.
+_ROWS_PER_STRIPE_SQUARED = 1 << 22
 _MAX_STRIPES = 32
 # From about a billion rows on, source groups grow as the square root of the rows.
 _ROWS_PER_GROUP_SQUARED = 1 << 30
-# One build task sorts this many edges at most: 0.5 GB of keys and ids.
+# A build task sorts about this many edges, 0.5 GB of keys and ids, until groups are single stripes.
 _ROWS_PER_TILE = 1 << 23
 
 
@@ -56,7 +55,7 @@ class GridPlan:
 
 def plan_grid(n_rows: int) -> GridPlan:
     """The grid for an edge table of ``n_rows`` rows."""
-    stripes = min(_MAX_STRIPES, max(1, math.ceil(n_rows / _ROWS_PER_STRIPE)))
+    stripes = min(_MAX_STRIPES, max(1, math.ceil(math.sqrt(n_rows / _ROWS_PER_STRIPE_SQUARED))))
     solve_groups = max(1, round(math.sqrt(n_rows / _ROWS_PER_GROUP_SQUARED)))
     solve_groups = min(solve_groups, stripes)
     per_group = math.ceil(n_rows / (stripes * solve_groups * _ROWS_PER_TILE))

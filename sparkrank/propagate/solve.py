@@ -105,9 +105,13 @@ def _columns(config: Config, graph: Graph, lists: HostLists, members: Members) -
 
 
 def _solve_place(config: Config, graph: Graph, lists: HostLists) -> Any:
-    """The solve's folder; another tolerance is another solve, more steps are the same one."""
+    """The solve's folder; another tolerance is another solve, more steps are the same one.
+
+    It belongs to one run, whose holder alone writes and removes it.
+    """
     known = lists.known_spam
     parts = {
+        "run": config.run.id,
         "graph": graph.fingerprint,
         "core": lists.core.fingerprint,
         "known_spam": known.fingerprint if known else None,

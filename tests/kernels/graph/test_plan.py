@@ -11,8 +11,8 @@ ROWS = st.one_of(
     st.floats(0, 11).map(lambda exponent: int(10**exponent)),
     st.integers(0, 37).map(lambda power: 2**power),
 )
-# Documented: rows of a stripe while there are fewer than the most stripes, rows of a build task.
-ROWS_PER_STRIPE, MAX_STRIPES, ROWS_PER_TILE = 1 << 22, 32, 1 << 23
+# Documented: stripes are the square root of the rows over this, up to the most; rows of a build task.
+ONE_STRIPE, MAX_STRIPES, ROWS_PER_TILE = 1 << 22, 32, 1 << 23
 
 
 def check_groups(plan: GridPlan) -> None:
@@ -38,8 +38,7 @@ def test_groups_nest_and_stay_within_the_limits(rows: int) -> None:
     assert plan_grid(rows) == plan
     assert plan.stripes <= MAX_STRIPES
     if plan.stripes < MAX_STRIPES:
-        assert (plan.stripes - 1) * ROWS_PER_STRIPE < max(1, rows) <= plan.stripes * ROWS_PER_STRIPE
-        assert plan.build_groups == plan.solve_groups == 1
+        assert (plan.stripes - 1) ** 2 * ONE_STRIPE < max(1, rows) <= plan.stripes**2 * ONE_STRIPE
     # As far as 32 stripes can be cut; beyond, a tile grows with the table.
     if rows <= 8 * 10**9:
         assert rows <= plan.stripes * plan.build_groups * ROWS_PER_TILE
@@ -56,12 +55,12 @@ def test_more_rows_never_have_fewer_stripes_or_solve_groups(one: int, other: int
     ("rows", "stripes", "solve_groups"),
     [
         (0, 1, 1),
-        (ROWS_PER_STRIPE, 1, 1),
-        (ROWS_PER_STRIPE + 1, 2, 1),
-        (55_600_000, 14, 1),
-        (31 * ROWS_PER_STRIPE + 1, 32, 1),
+        (ONE_STRIPE, 1, 1),
+        (ONE_STRIPE + 1, 2, 1),
+        (55_600_000, 4, 1),
+        (31**2 * ONE_STRIPE + 1, 32, 2),
         # Source groups from about a billion rows on, as the square root of the rows.
-        (2 << 30, 32, 1),
+        (2 << 30, 23, 1),
         (4 << 30, 32, 2),
         (16 << 30, 32, 4),
         (64 << 30, 32, 8),
