@@ -49,7 +49,11 @@ def tasks_in_process() -> Iterator[None]:
     together), and a Spark job a step costs a small graph a hundred times its arithmetic.
     """
     with pytest.MonkeyPatch.context() as patch:
-        patch.setattr(TaskRunner, "__init__", lambda self, spark, n_tasks: setattr(self, "n_tasks", n_tasks))
+
+        def start(self: TaskRunner, spark: object, n_tasks: int, *, even: bool = False) -> None:
+            self.n_tasks = n_tasks
+
+        patch.setattr(TaskRunner, "__init__", start)
         patch.setattr(TaskRunner, "run", lambda self, task, what: [task(n) for n in range(self.n_tasks)])
         patch.setattr(TaskRunner, "close", lambda self: None)
         yield

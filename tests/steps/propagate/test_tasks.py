@@ -16,6 +16,15 @@ def test_reports_come_in_the_order_of_the_tasks(spark) -> None:
         assert runner.run(str, "names") == ["0", "1", "2", "3", "4"]
 
 
+def test_even_tasks_share_partitions_and_report_alike(spark) -> None:
+    """A local master runs each core's share at once; the reports are those of a partition each."""
+    cores = spark.sparkContext.defaultParallelism
+    with TaskRunner(spark, 7, even=True) as shared, TaskRunner(spark, 7) as apart:
+        assert shared._anchor.getNumPartitions() == cores < 7
+        assert apart._anchor.getNumPartitions() == 7
+        assert shared.run(lambda n: n * n, "squares") == apart.run(lambda n: n * n, "squares")
+
+
 def test_an_error_says_step_and_task(spark, web_crawl, grid_scored, tmp_path) -> None:
     """A graph whose folder is gone: the worker's error names the work and the number of its task."""
     gone = GraphFolder(place=resolve(str(tmp_path / "gone")))
