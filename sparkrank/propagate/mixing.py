@@ -19,8 +19,8 @@ from sparkrank.tasks import TaskRunner
 
 # Plain steps before the first cycle: the fast modes die by themselves.
 _FIRST_STEPS = 4
-# Residuals a mixture: on a real graph, one with planted rings and an R-MAT graph, 7 took fewer steps
-# than 4 to 6 and as few as 9 (26, 94 and 14 against 90, 120 and 24 without; tests/benchmarks/mixing.py).
+# Residuals a mixture: more take out more slow modes and keep more states. Seven took fewer steps than four
+# to six on a real host graph, a web with planted rings and an R-MAT graph, and nine hardly fewer.
 _CYCLE_STEPS = 7
 
 KEPT_STEPS = _CYCLE_STEPS + 2
