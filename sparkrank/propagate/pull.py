@@ -23,11 +23,13 @@ def pull(
     groups: Iterable[int],
     flow_of: FlowOf,
     out: NDArray[np.float64],
+    *,
+    even: bool = False,
 ) -> int:
     """Adds to ``out`` (k, hosts of the phase) what the source phases of the build groups send.
 
-    The order of the sums is that of the groups and of the sections in their cells.  Returns the number
-    of edges.
+    The order of the sums is that of the groups and of the sections in their cells.  ``even``: every edge
+    counts once, whatever its weight.  Returns the number of edges.
     """
     with_edges = set(graph.cells_into(stripe))
     n_edges = 0
@@ -38,7 +40,8 @@ def pull(
             if placed.from_phase in from_phases:
                 end = placed.first_source + placed.n_sources
                 flow = flow_of(placed.from_stripe, placed.from_phase)[:, placed.first_source : end]
-                accumulate(placed.section, flow, out)
+                section = placed.section._replace(weights=None) if even else placed.section
+                accumulate(section, flow, out)
                 n_edges += len(placed.section.sources)
     return n_edges
 

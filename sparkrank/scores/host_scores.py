@@ -19,7 +19,7 @@ from sparkrank.kernels.mass import Masses, spam_mass
 from sparkrank.names.suffixes import SuffixRules, split_hosts
 from sparkrank.propagate.columns import core_members
 from sparkrank.propagate.layers import Solve
-from sparkrank.propagate.reach import reached_hosts
+from sparkrank.propagate.reach import NOT_REACHED, core_distances
 from sparkrank.propagate.solver import Solution
 from sparkrank.tasks import TaskRunner
 
@@ -53,7 +53,8 @@ class _ScoreTask:
         # The solve's order back to the order of the ids, in which names and degrees are.
         position = read_arrays(files.order(stripe))["position"]
         columns = _solved_columns(solve, stripe, self.solution.steps)[:, position]
-        reached = _reached(solve, stripe, self.sweeps)[position]
+        distance = _distances(solve, stripe, self.sweeps)[position]
+        reached = distance != NOT_REACHED
         is_core = core_members(solve.folder, stripe, len(position))[position]
         names = pq.read_table(files.names(stripe).path, filesystem=files.names(stripe).filesystem)["host"]
         degrees = read_arrays(files.degrees(stripe))
@@ -75,6 +76,7 @@ class _ScoreTask:
                 **_mass_columns(masses),
                 "is_core": is_core,
                 "core_reached": reached,
+                "core_distance": pa.array(distance.astype(np.int32), mask=~reached),
             }
         )
         sink = pa.BufferOutputStream()
@@ -109,6 +111,6 @@ def _solved_columns(solve: Solve, stripe: int, steps: int) -> NDArray[np.float64
     return np.concatenate(parts, axis=1)
 
 
-def _reached(solve: Solve, stripe: int, sweeps: int) -> NDArray[np.bool_]:
+def _distances(solve: Solve, stripe: int, sweeps: int) -> NDArray[np.int64]:
     phases = range(solve.graph.n_phases)
-    return np.concatenate([reached_hosts(solve, stripe, phase, sweeps) for phase in phases])
+    return np.concatenate([core_distances(solve, stripe, phase, sweeps) for phase in phases])

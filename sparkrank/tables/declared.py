@@ -128,6 +128,15 @@ _SCORE_COLUMNS = (
         "and the core says nothing about the host.",
         caution=_UNKNOWN,
     ),
+    ColumnSpec(
+        name="core_distance",
+        type=ColumnType.INT,
+        unit="links",
+        nullable=True,
+        meaning="Links on the shortest path from the nearest core member, which has 0 itself. "
+        "Null where no path leads here from the core.",
+        caution="Near is no endorsement, far is no evidence.",
+    ),
 )
 
 HOST_SCORES = TableSpec(

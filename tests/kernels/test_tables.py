@@ -32,6 +32,7 @@ SCORES = [
     ("relative_mass_high", "double", True),
     ("is_core", "boolean", False),
     ("core_reached", "boolean", False),
+    ("core_distance", "int", True),
 ]
 AGREED = {
     "host_scores": [("host", "string", False), *SCORES],

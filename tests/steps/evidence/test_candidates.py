@@ -47,6 +47,7 @@ def score(host: str, **values: Any) -> dict[str, Any]:
         "relative_mass_high": 0.95,
         "is_core": False,
         "core_reached": True,
+        "core_distance": 2,
     }
     return row | values
 

@@ -71,6 +71,7 @@ def test_a_grid_has_the_values_of_one_stripe(web_crawl, links_scored, grid_score
         np.testing.assert_allclose(grid_scored.column(name), single.column(name), rtol=1e-12, atol=1e-12)
     for name in ("in_degree", "out_degree", "is_core", "core_reached"):
         assert grid_scored.column(name).tolist() == single.column(name).tolist()
+    assert grid_scored.table["core_distance"] == single.table["core_distance"]
 
 
 @pytest.mark.parametrize(("files", "piece_rows"), [(2, 10**6), (7, 100)])
