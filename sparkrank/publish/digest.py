@@ -14,6 +14,7 @@ import pyarrow as pa
 import pyarrow.parquet as pq
 from numpy.typing import NDArray
 
+from sparkrank.errors import SparkrankError
 from sparkrank.kernels.xxhash import xxh64
 from sparkrank.names.octets import octets_of
 from sparkrank.places import Place
@@ -27,6 +28,8 @@ _LANES = (0x9E3779B97F4A7C15, 0xD1B54A32D192ED03)
 _STEP = np.uint64(0x9E3779B97F4A7C15)
 _NULL = np.uint64(0x5851F42D4C957F2D)
 _BATCH_ROWS = 1 << 17
+# Temporaries of a pass stay in the processor's cache.
+_PASS_ROWS = 1 << 14
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -38,21 +41,42 @@ class FileRows:
     nulls: dict[str, int]
 
 
+class RowDigest:
+    """Takes the rows of one file as they come; the first is at position ``first_row`` of the table."""
+
+    def __init__(self, table: TableSpec, first_row: int) -> None:
+        self._table = table
+        self._first = first_row
+        self._position = first_row
+        self._lanes = np.zeros(len(_LANES), np.uint64)
+        self._nulls = {column.name: 0 for column in table.columns if not column.nullable}
+
+    def add(self, batch: pa.RecordBatch) -> None:
+        """Takes the next rows."""
+        for first in range(0, batch.num_rows, _PASS_ROWS):
+            hashes = _row_hashes(batch.slice(first, _PASS_ROWS), self._table, self._nulls)
+            end = self._position + len(hashes)
+            at = np.arange(self._position, end, dtype=np.uint64) * _STEP
+            for i, lane in enumerate(_LANES):
+                placed = _mixed(hashes ^ _mixed(at + np.uint64(lane)))
+                self._lanes[i] ^= np.bitwise_xor.reduce(placed)
+            self._position = end
+
+    @property
+    def file_rows(self) -> FileRows:
+        """What the rows so far add to their table's digest."""
+        lanes = tuple(int(lane) for lane in self._lanes)
+        return FileRows(rows=self._position - self._first, lanes=lanes, nulls=dict(self._nulls))
+
+
 def digest_file(place: Place, first_row: int, table: TableSpec) -> FileRows:
     """Reads one file whose rows begin at position `first_row` of the table."""
-    lanes = np.zeros(len(_LANES), np.uint64)
-    nulls = {column.name: 0 for column in table.columns if not column.nullable}
-    position = first_row
+    digest = RowDigest(table, first_row)
     with place.filesystem.open_input_file(place.path) as source:
         file = pq.ParquetFile(source)
-        batches = file.iter_batches(_BATCH_ROWS, columns=list(table.column_names), use_threads=False)
-        for batch in batches:
-            hashes = _row_hashes(batch, table, nulls)
-            at = np.arange(position, position + batch.num_rows, dtype=np.uint64)
-            for i, lane in enumerate(_LANES):
-                lanes[i] ^= np.bitwise_xor.reduce(_mixed(hashes ^ _mixed(at * _STEP + np.uint64(lane))))
-            position += batch.num_rows
-    return FileRows(rows=position - first_row, lanes=tuple(int(lane) for lane in lanes), nulls=nulls)
+        for batch in file.iter_batches(_BATCH_ROWS, columns=list(table.column_names), use_threads=False):
+            digest.add(batch)
+    return digest.file_rows
 
 
 def combine(parts: Sequence[FileRows]) -> str:
@@ -61,6 +85,17 @@ def combine(parts: Sequence[FileRows]) -> str:
     for part in parts:
         words = [word ^ lane for word, lane in zip(words, part.lanes, strict=True)]
     return "xxh64x2:" + "".join(f"{word:016x}" for word in words)
+
+
+def check_nulls(table: TableSpec, parts: Sequence[FileRows]) -> None:
+    """SparkrankError if a column that must have none has nulls."""
+    for column in table.columns:
+        found = sum(part.nulls.get(column.name, 0) for part in parts)
+        if found:
+            raise SparkrankError(
+                f"table {table.name}: expected no nulls in column {column.name}; "
+                f"found {found} rows with one; this is a fault of the program, report it"
+            )
 
 
 def digest_ordered_rows(output: Place, files: Sequence[FileEntry], table: TableSpec) -> str:
@@ -118,6 +153,10 @@ def _list_hashes(values: pa.Array) -> _Hashes:
 
 def _mixed(words: _Hashes) -> _Hashes:
     """Every bit of the result depends on every bit of the word (splitmix64's finish)."""
-    words = (words ^ (words >> np.uint64(30))) * np.uint64(0xBF58476D1CE4E5B9)
-    words = (words ^ (words >> np.uint64(27))) * np.uint64(0x94D049BB133111EB)
-    return words ^ (words >> np.uint64(31))
+    mixed = words >> np.uint64(30)
+    mixed ^= words
+    mixed *= np.uint64(0xBF58476D1CE4E5B9)
+    mixed ^= mixed >> np.uint64(27)
+    mixed *= np.uint64(0x94D049BB133111EB)
+    mixed ^= mixed >> np.uint64(31)
+    return mixed

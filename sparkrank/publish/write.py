@@ -15,7 +15,7 @@ from pyspark.sql import functions as sf
 from sparkrank.errors import SparkrankError
 from sparkrank.places import Place
 from sparkrank.publish.attempts import RunFolder
-from sparkrank.publish.digest import FileRows, combine, digest_file
+from sparkrank.publish.digest import FileRows, check_nulls, combine, digest_file
 from sparkrank.publish.entries import FileEntry, TableEntry
 from sparkrank.tables import TableSpec, spark_schema
 
@@ -43,7 +43,7 @@ def publish_table(df: DataFrame, table: TableSpec, run: RunFolder) -> TableEntry
             f"table {table.name} at {folder}: expected the {rows_in} rows that were written; "
             f"found {rows} in its files; run again"
         )
-    _check_nulls(table, [part for _, part in written])
+    check_nulls(table, [part for _, part in written])
     files = tuple(file for file, _ in written)
     digest = combine([part for _, part in written])
     _log.info(
@@ -110,13 +110,3 @@ def _describe(output: Place, table: TableSpec, start: tuple[str, int]) -> tuple[
     part = digest_file(place, first_row, table)
     entry = FileEntry(path=path, rows=part.rows, bytes=stamp.size, digest="sha256:" + stamp.checksum)
     return entry, part
-
-
-def _check_nulls(table: TableSpec, parts: list[FileRows]) -> None:
-    for column in table.columns:
-        found = sum(part.nulls.get(column.name, 0) for part in parts)
-        if found:
-            raise SparkrankError(
-                f"table {table.name}: expected no nulls in column {column.name}; "
-                f"found {found} rows with one; this is a fault of the program, report it"
-            )
