@@ -25,6 +25,7 @@ from sparkrank.names.lists import HostLists, read_lists
 from sparkrank.names.suffixes import SuffixRules, SuffixSections
 from sparkrank.places import resolve
 from sparkrank.propagate.solve import SolvedHosts, solve_hosts
+from sparkrank.publish.by_tasks import publish_parts
 from sparkrank.publish.clean import remove_unnamed
 from sparkrank.publish.manifest import Manifest, check_run, write_manifest
 from sparkrank.publish.records import StepRecord, adopt, commit_step, missing_file
@@ -75,7 +76,7 @@ class RunInputs:
 
     @property
     def run_fingerprint(self) -> str:
-        return self.fingerprint("names", "graph", "solve", "mass", "candidates")
+        return self.fingerprint("names", "graph", "solve", "mass", "candidates", "evidence")
 
 
 class InputCheck:
@@ -138,7 +139,7 @@ def score(context: JobContext, inputs: RunInputs) -> StepRecord:
     solved = solve_hosts(context.spark, context.config, graph, inputs.lists)
     scores = host_scores(context.spark, solved.solution, solved.sweeps, inputs.rules)
     tables = {
-        "host_scores": publish_table(scores, HOST_SCORES, context.run),
+        "host_scores": publish_parts(context.spark, scores, HOST_SCORES, context.run),
         "rejected_rows": publish_table(_rejected(context, graph, inputs, solved), REJECTED_ROWS, context.run),
     }
     log.info("scores: %.1f s", time.monotonic() - started)
@@ -168,14 +169,30 @@ def rank(context: JobContext, inputs: RunInputs, scored: StepRecord) -> StepReco
         log.info("candidates: done before")
         return record
     strength = _strength(context.config, scored)
-    paths = [context.run.output.below(file.path).uri for file in scored.tables["host_scores"].files]
-    candidates = spam_candidates(context.spark.read.parquet(*paths), context.config.candidates, strength)
-    table = publish_table(candidates, SPAM_CANDIDATES, context.run)
+    scores = [context.run.output.below(file.path) for file in scored.tables["host_scores"].files]
+    found = gather_support(
+        context.spark,
+        build(context, inputs),
+        resolve(context.config.run.work).child("evidence", fingerprint[:24]),
+        scores,
+        inputs.lists.core,
+        context.config.candidates,
+        context.config.evidence,
+        damping=context.config.solve.damping,
+    )
+    rows = context.spark.read.parquet(*(place.uri for place in scores))
+    measures = read_table(context.spark, found.measures, MEASURES)
+    candidates = spam_candidates(rows, measures, context.config.candidates, strength)
+    support = read_table(context.spark, found.support, CANDIDATE_SUPPORT)
+    tables = {
+        "spam_candidates": publish_table(candidates, SPAM_CANDIDATES, context.run),
+        "candidate_support": publish_table(support, CANDIDATE_SUPPORT, context.run),
+    }
     candidates.sparkSession.catalog.clearCache()
     record = StepRecord(
         step="rank_candidates",
         fingerprint=fingerprint,
-        tables={"spam_candidates": table},
+        tables=tables,
         facts={
             "core_start": strength.start,
             "boosters_hidden_by_core_link": strength.hidden_boosters,
@@ -183,6 +200,7 @@ def rank(context: JobContext, inputs: RunInputs, scored: StepRecord) -> StepReco
         },
     )
     commit_step(context.run, record)
+    found.folder.place.delete_tree()
     return record
 
 

@@ -52,8 +52,8 @@ class SolveFolder:
         return self.place.child("reached", f"layer-{phase:02d}", f"{stripe:03d}.arrays")
 
     def scores(self, stripe: int) -> Place:
-        """Scores of the stripe's hosts, in the order of their ids, as Parquet."""
-        return self.place.child("scores", f"{stripe:03d}.parquet")
+        """Rows of ``host_scores`` for the stripe's hosts, a record batch a part of the table."""
+        return self.place.child("scores", f"{stripe:03d}.arrow")
 
     def record(self, name: str) -> dict[str, Any] | None:
         """A committed record, or None."""

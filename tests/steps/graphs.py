@@ -24,8 +24,10 @@ from sparkrank.names.suffixes import SuffixRules
 from sparkrank.places import resolve
 from sparkrank.propagate.solve import SolvedHosts, solve_hosts
 from sparkrank.publish.attempts import RunFolder, new_attempt_id
+from sparkrank.publish.by_tasks import publish_parts
 from sparkrank.publish.entries import TableEntry
 from sparkrank.publish.lock import hold_run
+from sparkrank.publish.parts import TableParts, read_part
 from sparkrank.publish.write import publish_table
 from sparkrank.scores.host_scores import host_scores
 from sparkrank.tables import TableSpec
@@ -148,9 +150,19 @@ class Crawl:
     def solve(self, graph: Graph, **settings: Any) -> SolvedHosts:
         return solve_hosts(self.spark, self.config(**settings), graph, self.lists(**settings))
 
+    def score_parts(self, solved: SolvedHosts) -> TableParts:
+        """The parts of `host_scores`, of which it is published."""
+        return host_scores(self.spark, solved.solution, solved.sweeps, RULES)
+
+    def score_table(self, solved: SolvedHosts) -> pa.Table:
+        """The rows of `host_scores`, by host."""
+        parts = self.score_parts(solved)
+        found = [read_part(parts.files, part) for part in range(len(parts.rows_by_part))]
+        return pa.concat_tables(found).sort_by("host")
+
     def scores(self, solved: SolvedHosts) -> Any:
         """The DataFrame of `host_scores`."""
-        return host_scores(self.spark, solved.solution, solved.sweeps, RULES)
+        return self.spark.createDataFrame(self.score_table(solved))
 
     def run(
         self,
@@ -164,15 +176,17 @@ class Crawl:
         with contextlib.nullcontext() if by_spark else tasks_in_process():
             graph = graph or self.build(plan=plan, **settings)
             solved = self.solve(graph, **settings)
-            table = self.scores(solved).toArrow().sort_by("host")
+            table = self.score_table(solved)
         return Scored(graph=graph, solved=solved, table=table)
 
 
 def publish(crawl: Crawl, rows: Any, table: TableSpec) -> TableEntry:
-    """Publishes rows below the crawl's output; the entry with the digest of the ordered rows."""
+    """Publishes a DataFrame or parts below the crawl's output; the entry has the ordered rows' digest."""
     output = resolve(crawl.config().run.output)
     with hold_run(output, "test") as lock:
         run = RunFolder(output=output, run_id="test", attempt_id=new_attempt_id(), lock=lock)
+        if isinstance(rows, TableParts):
+            return publish_parts(crawl.spark, rows, table, run)
         return publish_table(rows, table, run)
 
 

@@ -95,8 +95,10 @@ def test_table_digests_depend_on_no_number_of_partitions(
     one = publish(web_crawl, web_crawl.scores(grid_scored.solved), HOST_SCORES)
     assert (len(seven.files), len(one.files)) == (7, 1)
     assert seven.digest == one.digest
-    # And of what another way to the same scores gives.
-    assert seven.rows == len(grid_scored.hosts)
+    # As a run publishes them: from parts, without a shuffle.
+    by_tasks = publish(web_crawl, web_crawl.score_parts(grid_scored.solved), HOST_SCORES)
+    assert by_tasks.digest == seven.digest
+    assert by_tasks.rows == seven.rows == len(grid_scored.hosts)
 
 
 # The same run in a process of its own with one core.
@@ -117,7 +119,7 @@ crawl = Crawl(
               "solve__tolerance": float(sys.argv[4])},
 )
 scored = crawl.run(plan=GRID, by_spark=True)
-print("digest", publish(crawl, crawl.scores(scored.solved), HOST_SCORES).digest)
+print("digest", publish(crawl, crawl.score_parts(scored.solved), HOST_SCORES).digest)
 spark.stop()
 """
 
@@ -133,7 +135,7 @@ def test_the_number_of_cores_changes_no_bit(master, web_crawl, grid_scored, tmp_
     )
     assert done.returncode == 0, done.stderr
     digest = next(line.split()[1] for line in done.stdout.splitlines() if line.startswith("digest"))
-    assert digest == publish(web_crawl, web_crawl.scores(grid_scored.solved), HOST_SCORES).digest
+    assert digest == publish(web_crawl, web_crawl.score_parts(grid_scored.solved), HOST_SCORES).digest
     (solve,) = (tmp_path / "work" / "solves").iterdir()
     expected = file_digests(Path(grid_scored.solved.solution.solve.folder.place.local_path))
     assert file_digests(solve) == expected
