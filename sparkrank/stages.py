@@ -76,7 +76,7 @@ class RunInputs:
 
     @property
     def run_fingerprint(self) -> str:
-        return self.fingerprint("names", "graph", "solve", "mass", "candidates", "evidence")
+        return self.fingerprint("names", "graph", "solve", "mass", "candidates")
 
 
 class InputCheck:
@@ -169,30 +169,14 @@ def rank(context: JobContext, inputs: RunInputs, scored: StepRecord) -> StepReco
         log.info("candidates: done before")
         return record
     strength = _strength(context.config, scored)
-    scores = [context.run.output.below(file.path) for file in scored.tables["host_scores"].files]
-    found = gather_support(
-        context.spark,
-        build(context, inputs),
-        resolve(context.config.run.work).child("evidence", fingerprint[:24]),
-        scores,
-        inputs.lists.core,
-        context.config.candidates,
-        context.config.evidence,
-        damping=context.config.solve.damping,
-    )
-    rows = context.spark.read.parquet(*(place.uri for place in scores))
-    measures = read_table(context.spark, found.measures, MEASURES)
-    candidates = spam_candidates(rows, measures, context.config.candidates, strength)
-    support = read_table(context.spark, found.support, CANDIDATE_SUPPORT)
-    tables = {
-        "spam_candidates": publish_table(candidates, SPAM_CANDIDATES, context.run),
-        "candidate_support": publish_table(support, CANDIDATE_SUPPORT, context.run),
-    }
+    paths = [context.run.output.below(file.path).uri for file in scored.tables["host_scores"].files]
+    candidates = spam_candidates(context.spark.read.parquet(*paths), context.config.candidates, strength)
+    table = publish_table(candidates, SPAM_CANDIDATES, context.run)
     candidates.sparkSession.catalog.clearCache()
     record = StepRecord(
         step="rank_candidates",
         fingerprint=fingerprint,
-        tables=tables,
+        tables={"spam_candidates": table},
         facts={
             "core_start": strength.start,
             "boosters_hidden_by_core_link": strength.hidden_boosters,
@@ -200,7 +184,6 @@ def rank(context: JobContext, inputs: RunInputs, scored: StepRecord) -> StepReco
         },
     )
     commit_step(context.run, record)
-    found.folder.place.delete_tree()
     return record
 
 
