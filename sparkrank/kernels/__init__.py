@@ -12,4 +12,6 @@ Read in the order of the data flow:
 - ``extrapolate``: a better state from the last few steps
 - ``mass``: absolute and relative spam mass, and its range over the core's slices
 - ``farms``: closed forms of farm arithmetic
+- ``sources``: what the direct sources of a candidate look like
+- ``shape``: the shape of a candidate's support, and the order in which to look at candidates
 """

@@ -1,0 +1,142 @@
+"""The shape of a candidate's support, and the order in which to look at candidates.
+
+The question behind the order: how much of this score would be left if the hosts that exist for it were
+gone, and how many hosts with a standing of their own speak for it?
+
+    priority = s · K/(K + 2) · H^(1/3) · (1 - d/5) · log10(1 + M/(1 + I))
+
+- M, the *bound amount* (scaled): what comes from hosts whose walks lead here, but for what those
+  have from outside: the sum of m·c·T[u, x]·(p_u - e_u); m captive weight, e outside support.
+- s, M's share of all that in-links contribute.
+- I, the *breadth of independent support*: sources count by e/(1 + e), from 0 for a host that nobody else
+  supports to 1; one link among more than five counts for less, by 5 / out-links.
+- K, the number of bound sources, m/(1 + e) each: one or two are no farm.
+- H, how *alike* the sources are: chance that two of them, drawn by contribution, have about as many out-links
+  and in-links.
+- d, the share from the candidate's own domain: an owner's sub-hosts may well support each other.
+
+All but the logarithm are in [0, 1].  Becchetti, Castillo, Donato, Leonardi & Baeza-Yates, "Link-based
+characterization and detection of web spam", AIRWeb 2006, and Andersen et al., "Robust PageRank and locally
+computable spam detection features", AIRWeb 2008 (both from memory) gave the idea of looking at who supports
+whom at which distance; the formula is ours.
+"""
+
+from __future__ import annotations
+
+from typing import NamedTuple
+
+import numpy as np
+from numpy.typing import NDArray
+
+from sparkrank.kernels.sources import (
+    CandidateArrays,
+    DirectLinks,
+    add_by_candidate,
+    captive_weight,
+    contributions,
+    outside_support,
+    owners,
+)
+
+FEW_SOURCES = 2.0
+"""Bound sources at which the order gives half: a single strong source is a legacy, not a farm."""
+FEW_LINKS = 5.0
+"""Up to this many out-links a source speaks for each of them in full."""
+OWN_DOMAIN_LOSS = 0.2
+"""What support from the own domain alone costs: less than any other doubt, since farms share domains, too."""
+ALIKE_POWER = 1.0 / 3.0
+"""Alike sources are made up easily, unlike ones with little more work: the weakest of the factors."""
+_CLASSES_A_DOUBLING = 2
+_MOST_IN_LINKS = 5
+
+
+class ShapeColumns(NamedTuple):
+    """One value a candidate; shares are of what its in-links contribute, in [0, 1], 0 without in-links."""
+
+    exclusive_share: NDArray[np.float64]
+    """Mean of T[u, x]: 1 where all sources link here alone."""
+    returned_share: NDArray[np.float64]
+    """From sources that it links back to."""
+    domain_concentration: NDArray[np.float64]
+    """Herfindahl index of contributions over registrable domains: 1 where all sources have one."""
+    suffix_concentration: NDArray[np.float64]
+    """The same over public suffixes."""
+    own_domain_share: NDArray[np.float64]
+    unsupported_share: NDArray[np.float64]
+    """Mean of 1/(1 + e): 1 where nobody else supports the sources."""
+    mutual_target_share: NDArray[np.float64]
+    """From sources that link to another candidate, too."""
+    circling_share: NDArray[np.float64]
+    """Mean of closeness - T: what comes here on longer ways, as in rings."""
+    alike_sources: NDArray[np.float64]
+    bound_amount: NDArray[np.float64]
+    bound_share: NDArray[np.float64]
+    bound_sources: NDArray[np.float64]
+    independent_breadth: NDArray[np.float64]
+
+
+def concentration(
+    links: DirectLinks, weights: NDArray[np.float64], key: NDArray[np.int64]
+) -> NDArray[np.float64]:
+    """Herfindahl index of the weights over equal keys, by candidate, shape (n,); 0 where they add up to 0."""
+    of = owners(links.offsets)
+    order = np.lexsort((key, of))
+    of, key = of[order], key[order]
+    is_first = np.ones(len(of), dtype=np.bool_)
+    is_first[1:] = (of[1:] != of[:-1]) | (key[1:] != key[:-1])
+    starts = np.flatnonzero(is_first)
+    n = len(links.offsets) - 1
+    if len(starts) == 0:
+        return np.zeros(n)
+    sums = np.add.reduceat(weights[order], starts)
+    squares = np.bincount(of[starts], weights=sums**2, minlength=n)
+    total = np.bincount(of[starts], weights=sums, minlength=n)
+    return np.divide(squares, total**2, out=np.zeros(n), where=total > 0)
+
+
+def degree_class(links: DirectLinks) -> NDArray[np.int64]:
+    """Sources with about as many out-links (within a factor of √2) and as many in-links (5 and more are
+    one) are of one class, shape (m,)."""
+    outward = np.floor(_CLASSES_A_DOUBLING * np.log2(np.maximum(links.out_degree, 1))).astype(np.int64)
+    classes: NDArray[np.int64] = outward * (_MOST_IN_LINKS + 1) + np.minimum(links.in_degree, _MOST_IN_LINKS)
+    return classes
+
+
+def shape_columns(links: DirectLinks, candidates: CandidateArrays, damping: float) -> ShapeColumns:
+    """Shape columns of n candidates from all their direct links."""
+    given = contributions(links, damping)
+    total = add_by_candidate(links, given)
+
+    def share(weight: NDArray[np.float64] | NDArray[np.bool_]) -> NDArray[np.float64]:
+        part = add_by_candidate(links, given * weight)
+        return np.divide(part, total, out=np.zeros(len(total)), where=total > 0)
+
+    support = outside_support(links, candidates, damping)
+    captive = captive_weight(np.maximum(links.closeness, links.transition))
+    own_part = np.divide(links.score - support, links.score)
+    standing = support / (1.0 + support)
+    testimony = np.minimum(1.0, FEW_LINKS / np.maximum(links.out_degree, 1))
+    return ShapeColumns(
+        exclusive_share=share(links.transition),
+        returned_share=share(links.returned),
+        domain_concentration=concentration(links, given, links.domain),
+        suffix_concentration=concentration(links, given, links.suffix),
+        own_domain_share=share(links.domain == candidates.domain[owners(links.offsets)]),
+        unsupported_share=share(1.0 - standing),
+        mutual_target_share=share(links.candidates > 1),
+        circling_share=share(np.maximum(links.closeness - links.transition, 0.0)),
+        alike_sources=concentration(links, given, degree_class(links)),
+        bound_amount=add_by_candidate(links, given * captive * own_part),
+        bound_share=share(captive * own_part),
+        bound_sources=add_by_candidate(links, captive * (1.0 - standing)),
+        independent_breadth=add_by_candidate(links, standing * testimony),
+    )
+
+
+def priority(shape: ShapeColumns) -> NDArray[np.float64]:
+    """What candidates are ordered by, shape (n,); at least 0.  The formula is the module's."""
+    several = shape.bound_sources / (shape.bound_sources + FEW_SOURCES)
+    alike = shape.alike_sources**ALIKE_POWER
+    domain = 1.0 - OWN_DOMAIN_LOSS * shape.own_domain_share
+    against_breadth = np.log10(1.0 + shape.bound_amount / (1.0 + shape.independent_breadth))
+    return shape.bound_share * several * alike * domain * against_breadth
