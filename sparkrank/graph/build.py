@@ -39,7 +39,7 @@ _SUMMED = ("rows", "edge_rows", "not_followed", "self_links", "clashes")
 _BY_REASON = ("rejected", "rejected_hosts")
 
 # Counts up whenever a change makes other work files or other canonical names from the same input.
-_LAYOUT_VERSION = 2
+_LAYOUT_VERSION = 3
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -128,15 +128,15 @@ def build_graph(
 
 def _pieces(config: Config, edges: InputFacts, hosts: InputFacts | None) -> list[Piece]:
     """Edge pieces, then pieces of the hosts list."""
-    columns, text = ["src", "dst"], ["src", "dst"]
+    columns, dictionaries = ["src", "dst"], []
     if edges.has_links:
         columns.append("links")
     if edges.has_rel and config.graph.follow_only:
         columns.append("rel")
-        text.append("rel")
-    pieces = plan_pieces(edges, tuple(columns), tuple(text))
+        dictionaries.append("rel")
+    pieces = plan_pieces(edges, tuple(columns), tuple(dictionaries))
     if hosts is not None:
-        pieces += plan_pieces(hosts, ("host",), ("host",))
+        pieces += plan_pieces(hosts, ("host",))
     return pieces
 
 

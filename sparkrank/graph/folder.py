@@ -19,12 +19,16 @@ class GraphFolder:
     place: Place
 
     def scanned_edges(self, piece: int) -> Place:
-        """Ids of a piece's edges, by tile; removed after the build."""
+        """A piece's edges by tile, as ranks of the piece's hosts; removed after the build."""
         return self.place.child("scan", f"{piece:05d}.edges")
 
     def scanned_hosts(self, piece: int) -> Place:
         """Ids and names of a piece's hosts, by stripe; removed after the build."""
         return self.place.child("scan", f"{piece:05d}.hosts")
+
+    def scanned_rows(self, stripe: int) -> Place:
+        """Where the hosts of every piece are in the stripe; removed after the build."""
+        return self.place.child("scan", f"{stripe:03d}.rows")
 
     def rejected(self, piece: int) -> Place:
         """Rejected values of a piece, as Parquet."""

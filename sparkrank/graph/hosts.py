@@ -49,6 +49,10 @@ class HostsTask:
             raise SparkrankError(f"{len(ids_here)} hosts, expected at most {MAX_STRIPE_HOSTS} a stripe")
         if not clashes:
             write_arrays(self.folder.ids(stripe), {"ids": ids_here})
+            rows = np.empty(len(order), np.int32)
+            rows[order] = np.cumsum(is_first, dtype=np.int32) - np.int32(1)
+            bounds = np.cumsum([0, *(len(part) for part in ids)])
+            write_arrays(self.folder.scanned_rows(stripe), {"bounds": bounds, "rows": rows})
             self._write_names(stripe, names, order[is_first])
         id_sum = int(np.add.reduce(ids_here.view(np.uint64)))
         return {"hosts": len(ids_here), "clashes": clashes, "id_sum": id_sum}

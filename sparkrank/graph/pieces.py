@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 from dataclasses import dataclass
+from itertools import pairwise
 from typing import Any
 
 import pyarrow as pa
@@ -14,14 +15,20 @@ from sparkrank.inputs import InputFacts
 from sparkrank.places import Place
 from sparkrank.shown import one_line, shown_value
 
-# A piece of two million rows is a second of work; its output a tile is still a piece worth reading.
+# A piece of two million rows is a second of work …
 _LEAST_ROWS = 1 << 21
-# Pieces grow with the table so that no tile is put together from more than some hundreds of them …
+# … and larger ones meet fewer hosts a row that they have not met before, as long as there are enough pieces
+# for some cores.
+_FEW_PIECES = 8
+_FEW_ROWS = 1 << 23
+# Beyond that pieces grow with the table so that no tile is put together from more than some hundreds …
 _MOST_PIECES = 512
-# … until their columns would fill a worker's memory: 32 M rows are 0.5 GB of ids.
+# … until their rows would fill a worker's memory: 32 M are 0.3 GB of numbers, and 2 GB of distinct names.
 _MOST_ROWS = 1 << 25
-# Rows decoded at once: their dictionaries and indices take some hundred MB.
-_BATCH_ROWS = 1 << 20
+# A piece may be this much larger than wanted if that spares one of a few rows.
+_OVERFULL = 1.25
+# Rows decoded at once: their text stays near the processor.
+_BATCH_ROWS = 1 << 17
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -40,10 +47,12 @@ class Piece:
     source: str
     ranges: tuple[RowRange, ...]
     columns: tuple[str, ...]
-    text_columns: tuple[str, ...]
+    dictionaries: tuple[str, ...]
+    """Columns of few distinct values, which are read as Arrow dictionaries."""
+    rows: int
 
     def batches(self) -> Iterator[pa.RecordBatch]:
-        """The piece's rows, text columns as Arrow dictionaries; InputRefused for a damaged file."""
+        """The piece's rows; InputRefused for a damaged file."""
         for part in self.ranges:
             try:
                 yield from self._batches(part)
@@ -56,7 +65,7 @@ class Piece:
 
     def _batches(self, part: RowRange) -> Iterator[pa.RecordBatch]:
         with part.place.filesystem.open_input_file(part.place.path) as source:
-            file = pq.ParquetFile(source, read_dictionary=list(self.text_columns))
+            file = pq.ParquetFile(source, read_dictionary=list(self.dictionaries))
             groups = _groups_from(file.metadata, part.first, part.end)
             if groups:
                 yield from file.iter_batches(
@@ -67,9 +76,12 @@ class Piece:
                 )
 
 
-def plan_pieces(facts: InputFacts, columns: tuple[str, ...], text_columns: tuple[str, ...]) -> list[Piece]:
+def plan_pieces(
+    facts: InputFacts, columns: tuple[str, ...], dictionaries: tuple[str, ...] = ()
+) -> list[Piece]:
     """Pieces that together read every row of the input once."""
-    rows = min(_MOST_ROWS, max(_LEAST_ROWS, facts.rows // _MOST_PIECES))
+    rows = max(_LEAST_ROWS, min(_FEW_ROWS, facts.rows // _FEW_PIECES), facts.rows // _MOST_PIECES)
+    rows = min(_MOST_ROWS, rows)
     pieces: list[Piece] = []
     ranges: list[RowRange] = []
     held = 0
@@ -78,7 +90,11 @@ def plan_pieces(facts: InputFacts, columns: tuple[str, ...], text_columns: tuple
         nonlocal held
         if ranges:
             piece = Piece(
-                source=facts.source, ranges=tuple(ranges), columns=columns, text_columns=text_columns
+                source=facts.source,
+                ranges=tuple(ranges),
+                columns=columns,
+                dictionaries=dictionaries,
+                rows=held,
             )
             pieces.append(piece)
         ranges.clear()
@@ -86,9 +102,11 @@ def plan_pieces(facts: InputFacts, columns: tuple[str, ...], text_columns: tuple
 
     for file in facts.files:
         place = facts.place if facts.place.size() is not None else facts.place.below(file.name)
-        for first in range(0, file.rows, rows):
-            end = min(file.rows, first + rows)
-            if held + end - first > rows:
+        # Equal parts of about the rows wanted: no small rest of a file is a piece of its own.
+        parts = max(1, round(file.rows / rows))
+        cuts = [file.rows * part // parts for part in range(parts + 1)]
+        for first, end in pairwise(cuts):
+            if held + end - first > rows * _OVERFULL:
                 close()
             ranges.append(RowRange(place=place, first=first, end=end))
             held += end - first

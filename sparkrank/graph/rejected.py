@@ -9,6 +9,7 @@ import pyarrow as pa
 import pyarrow.parquet as pq
 from numpy.typing import NDArray
 
+from sparkrank.graph.piece_names import PieceNames
 from sparkrank.places import Place
 from sparkrank.shown import shown_value
 
@@ -22,15 +23,12 @@ class RejectedValues:
 
     counts: dict[tuple[str, str | None, str], int] = field(default_factory=dict)
 
-    def add_values(
-        self, source: str, values: pa.Array, reasons: pa.StringArray, index: NDArray[np.int32]
-    ) -> None:
-        """Rows whose value is rejected, as indices into the values; len(values) is a null."""
-        rows = np.bincount(index, minlength=len(values) + 1)
-        for at in np.flatnonzero(rows).tolist():
-            value = _text(values[at]) if at < len(values) else None
-            reason = "null" if value is None else reasons[at].as_py()
-            self._add(source, value, reason, int(rows[at]))
+    def add_values(self, source: str, names: PieceNames, rows: NDArray[np.int32]) -> None:
+        """Rows with a rejected value, as numbers of ``names``."""
+        for number, count in zip(
+            *(part.tolist() for part in np.unique(rows, return_counts=True)), strict=True
+        ):
+            self._add(source, *names.rejection(number), count)
 
     def add_links(self, batch: pa.RecordBatch, rows: NDArray[np.bool_]) -> None:
         if rows.any():
@@ -66,11 +64,3 @@ def write_rejected(place: Place, rejected: RejectedValues) -> None:
     sink = pa.BufferOutputStream()
     pq.write_table(table, sink)
     place.write_bytes(sink.getvalue())
-
-
-def _text(value: pa.Scalar) -> str | None:
-    octets = value.as_buffer()
-    if octets is None:
-        return None
-    # 200 characters are shown; the rest of a value of megabytes is not worth decoding.
-    return str(octets.to_pybytes()[:4000].decode("utf-8", "replace"))

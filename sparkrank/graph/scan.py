@@ -1,8 +1,9 @@
-"""Edge rows as they come → ids of accepted edges by tile, hosts by stripe, rejected values.
+"""Edge rows as they come → edges by tile as ranks of a piece's hosts, hosts by stripe, rejected values.
 
-A task reads a piece of the table once.  Parquet keeps repeated strings as dictionaries, and so does
-the task: names are decided and hashed once a distinct value of a batch, and a row is from then on two
-indices.  No row goes through the JVM, and no Python runs for a row.
+A task reads a piece of the table once.  Its values are numbered and decided once a distinct value; a row
+is from then on two numbers of four bytes.  At the end the piece's hosts are sorted by id, and the numbers
+become ranks in that order, which the next stages turn into positions in the graph's stripes.  No row goes
+through the JVM, and no Python runs for a row.
 """
 
 from __future__ import annotations
@@ -12,23 +13,24 @@ from typing import Any
 
 import numpy as np
 import pyarrow as pa
-import pyarrow.compute as pc
 from numpy.typing import NDArray
 
 from sparkrank.arrays import write_arrays
-from sparkrank.graph.batch_columns import encoded, link_counts, not_followed
+from sparkrank.graph.batch_columns import link_counts, not_followed
 from sparkrank.graph.folder import GraphFolder
+from sparkrank.graph.piece_names import PieceNames
 from sparkrank.graph.pieces import Piece
 from sparkrank.graph.plan import GridPlan
 from sparkrank.graph.rejected import RejectedValues, write_rejected
 from sparkrank.kernels.stripes import stripe_of
 from sparkrank.kernels.xxhash import xxh64
-from sparkrank.names.native import decide_names
 from sparkrank.names.octets import octets_of
-from sparkrank.names.suffixes import SuffixRules, split_hosts
+from sparkrank.names.suffixes import SuffixRules
 
 # Tells two names of one id apart: any other seed will do.
 _CHECK_SEED = 0x5EED
+# Distinct values a row for which there is room from the start; crawls have fewer.
+_VALUES_A_ROW = 0.5
 
 
 @dataclass(frozen=True)
@@ -46,170 +48,166 @@ class ScanTask:
 
     def __call__(self, number: int) -> dict[str, Any]:
         piece = self.pieces[number]
-        found = _Found(salt=self.salt)
+        names = PieceNames(self.salt, self.domain_rules, int(_VALUES_A_ROW * piece.rows))
+        found = _Found(names)
         for batch in piece.batches():
             if "host" in piece.columns:
-                self._add_hosts(batch, found)
+                found.add_hosts(batch)
             else:
-                self._add_edges(batch, found)
+                found.add_edges(batch, weighted=self.weighted, follow_only=self.follow_only)
         return found.write(self.folder, self.plan, number)
-
-    def _add_hosts(self, batch: pa.RecordBatch, found: _Found) -> None:
-        """Rows of the hosts list."""
-        names = self._names(batch.column("host"))
-        accepted = names.usable[names.index]
-        found.rejected.add_values("hosts.host", names.values, names.reasons, names.index[~accepted])
-        found.hosts.add(names, names.index[accepted])
-
-    def _add_edges(self, batch: pa.RecordBatch, found: _Found) -> None:
-        """Rows of the edge table, each counted once: rejected, not followed, self-link, or an edge."""
-        source, destination = self._names(batch.column("src")), self._names(batch.column("dst"))
-        source_fits, destination_fits = source.usable[source.index], destination.usable[destination.index]
-        links = link_counts(batch)
-        links_fit = np.ones(batch.num_rows, np.bool_) if links is None else links > 0
-        accepted = source_fits & destination_fits & links_fit
-        found.rows += batch.num_rows
-        if not accepted.all():
-            only_destination = source_fits & ~destination_fits
-            for name, names, rows in (
-                ("edges.src", source, ~source_fits),
-                ("edges.dst", destination, only_destination),
-            ):
-                found.rejected.add_values(name, names.values, names.reasons, names.index[rows])
-            found.rejected.add_links(batch, source_fits & destination_fits & ~links_fit)
-        found.hosts.add(source, source.index[accepted])
-        found.hosts.add(destination, destination.index[accepted])
-        kept = accepted
-        if self.follow_only and (unfollowed := not_followed(batch)) is not None:
-            found.not_followed += int(np.count_nonzero(accepted & unfollowed))
-            kept = accepted & ~unfollowed
-        source_ids, destination_ids = source.ids[source.index[kept]], destination.ids[destination.index[kept]]
-        linking = source_ids != destination_ids
-        found.self_links += len(linking) - int(np.count_nonzero(linking))
-        found.sources.append(source_ids[linking])
-        found.destinations.append(destination_ids[linking])
-        if self.weighted:
-            weights = np.ones(batch.num_rows, np.int64) if links is None else links
-            found.links.append(weights[kept][linking])
-
-    def _names(self, column: pa.Array) -> _Names:
-        """The distinct values of a column and what they name."""
-        values, index = encoded(column)
-        decided = decide_names(values)
-        hosts = decided.hosts
-        if self.domain_rules is not None:
-            # A host without a registrable domain is a node of its own.
-            hosts = pc.coalesce(split_hosts(hosts, self.domain_rules).domains, hosts)
-        usable = np.append(hosts.is_valid().to_numpy(zero_copy_only=False), False)
-        ids = np.append(_hash(hosts, self.salt), 0)
-        return _Names(values, hosts, decided.reasons, usable, ids, index)
-
-
-@dataclass(frozen=True)
-class _Names:
-    """Distinct values with their hosts, and the rows as indices into them.
-
-    Null rows have the index behind the last value; ``usable`` and ``ids`` have a place for it.
-    """
-
-    values: pa.Array
-    hosts: pa.StringArray
-    reasons: pa.StringArray
-    usable: NDArray[np.bool_]
-    ids: NDArray[np.int64]
-    index: NDArray[np.int32]
-
-
-@dataclass
-class _Hosts:
-    """Hosts of accepted rows; a host may come more than once until it is written."""
-
-    salt: int
-    ids: list[NDArray[np.int64]] = field(default_factory=list)
-    names: list[pa.StringArray] = field(default_factory=list)
-
-    def add(self, names: _Names, index: NDArray[np.int32]) -> None:
-        used = np.zeros(len(names.ids), np.bool_)
-        used[index] = True
-        chosen = np.flatnonzero(used)
-        self.ids.append(names.ids[chosen])
-        self.names.append(names.hosts.take(pa.array(chosen)))
-
-    def distinct(self) -> tuple[NDArray[np.int64], pa.LargeStringArray, int]:
-        """Sorted distinct ids, their names, and how many ids had two names."""
-        if not self.ids:
-            return np.zeros(0, np.int64), pa.array([], pa.large_string()), 0
-        ids = np.concatenate(self.ids)
-        names = pa.chunked_array(self.names, pa.string()).cast(pa.large_string()).combine_chunks()
-        if isinstance(names, pa.ChunkedArray):
-            names = pa.concat_arrays(names.chunks)
-        order = np.argsort(ids, kind="stable")
-        ids = ids[order]
-        is_first = np.ones(len(ids), np.bool_)
-        np.not_equal(ids[1:], ids[:-1], out=is_first[1:])
-        checks = _hash(names, _CHECK_SEED)[order]
-        clashes = int(np.count_nonzero(~is_first[1:] & (checks[1:] != checks[:-1])))
-        return ids[is_first], names.take(pa.array(order[is_first])), clashes
 
 
 @dataclass
 class _Found:
-    """What a task has gathered so far."""
+    """What a task has gathered so far; rows are numbers of ``names``."""
 
-    salt: int
+    names: PieceNames
     rows: int = 0
     not_followed: int = 0
-    self_links: int = 0
-    sources: list[NDArray[np.int64]] = field(default_factory=list)
-    destinations: list[NDArray[np.int64]] = field(default_factory=list)
+    sources: list[NDArray[np.int32]] = field(default_factory=list)
+    destinations: list[NDArray[np.int32]] = field(default_factory=list)
     links: list[NDArray[np.int64]] = field(default_factory=list)
+    accepted: list[NDArray[np.int32]] = field(default_factory=list)
+    """Rows whose hosts count although they are no edges."""
     rejected: RejectedValues = field(default_factory=RejectedValues)
-    hosts: _Hosts = field(init=False)
 
-    def __post_init__(self) -> None:
-        self.hosts = _Hosts(self.salt)
+    def add_hosts(self, batch: pa.RecordBatch) -> None:
+        """Rows of the hosts list."""
+        rows = self.names.number(batch.column("host"))
+        fits = self.names.usable[rows]
+        self.rejected.add_values("hosts.host", self.names, rows[~fits])
+        self.accepted.append(rows[fits])
+
+    def add_edges(self, batch: pa.RecordBatch, *, weighted: bool, follow_only: bool) -> None:
+        """Rows of the edge table, each counted once: rejected, not followed, or an edge."""
+        names = self.names
+        source, destination = names.number(batch.column("src")), names.number(batch.column("dst"))
+        self.rows += batch.num_rows
+        links = link_counts(batch)
+        source_fits, destination_fits = names.usable[source], names.usable[destination]
+        links_fit = np.ones(batch.num_rows, np.bool_) if links is None else links > 0
+        kept = source_fits & destination_fits & links_fit
+        if not kept.all():
+            self.rejected.add_values("edges.src", names, source[~source_fits])
+            self.rejected.add_values("edges.dst", names, destination[source_fits & ~destination_fits])
+            self.rejected.add_links(batch, source_fits & destination_fits & ~links_fit)
+        if follow_only and (unfollowed := not_followed(batch)) is not None:
+            unfollowed &= kept
+            self.not_followed += int(np.count_nonzero(unfollowed))
+            self.accepted += [source[unfollowed], destination[unfollowed]]
+            kept &= ~unfollowed
+        self.sources.append(source[kept])
+        self.destinations.append(destination[kept])
+        if weighted:
+            weights = np.ones(batch.num_rows, np.int64) if links is None else links
+            self.links.append(weights[kept])
 
     def write(self, folder: GraphFolder, plan: GridPlan, number: int) -> dict[str, Any]:
         """Writes the piece's files; the report counts its rows."""
-        n_edges = self._write_edges(folder, plan, number)
-        ids, names, clashes = self.hosts.distinct()
-        octets, offsets = octets_of(names)
-        bounds = np.searchsorted(stripe_of(ids, plan.stripes), np.arange(plan.stripes + 1))
-        arrays: dict[str, NDArray[Any]] = {"ids": ids, "bounds": bounds, "offsets": offsets, "bytes": octets}
-        arrays["checks"] = _hash(names, _CHECK_SEED)
-        write_arrays(folder.scanned_hosts(number), arrays)
+        hosts = self._hosts()
+        stripes = stripe_of(hosts.ids, plan.stripes)
+        bounds = np.searchsorted(stripes, np.arange(plan.stripes + 1))
+        octets, offsets = octets_of(hosts.names)
+        arrays: dict[str, NDArray[Any]] = {"bounds": bounds, "ids": hosts.ids, "checks": hosts.checks}
+        write_arrays(folder.scanned_hosts(number), {**arrays, "offsets": offsets, "bytes": octets})
         if self.rejected.counts:
             write_rejected(folder.rejected(number), self.rejected)
+        edge_rows, self_links = self._write_edges(folder, plan, number, hosts.ranks, bounds)
         return {
             "rows": self.rows,
-            "edge_rows": n_edges,
+            "edge_rows": edge_rows,
             "not_followed": self.not_followed,
-            "self_links": self.self_links,
+            "self_links": self_links,
             "rejected": self.rejected.by_reason("edges."),
             "rejected_hosts": self.rejected.by_reason("hosts."),
-            "clashes": clashes,
+            "clashes": hosts.clashes,
         }
 
-    def _write_edges(self, folder: GraphFolder, plan: GridPlan, number: int) -> int:
+    def _hosts(self) -> _Hosts:
+        """The distinct hosts of accepted rows; several values may name the same."""
+        used = np.zeros(len(self.names), np.bool_)
+        for rows in (*self.sources, *self.destinations, *self.accepted):
+            used[rows] = True
+        chosen = np.flatnonzero(used)
+        ids = np.concatenate([np.zeros(0, np.int64), *self.names.ids])[chosen]
+        order = np.argsort(ids)
+        ids, chosen = ids[order], chosen[order]
+        is_first = np.ones(len(ids), np.bool_)
+        np.not_equal(ids[1:], ids[:-1], out=is_first[1:])
+        rank = np.cumsum(is_first, dtype=np.int32)
+        rank -= 1
+        ranks = np.zeros(len(self.names), np.int32)
+        ranks[chosen] = rank
+        all_names = pa.chunked_array(self.names.hosts, pa.string()).cast(pa.large_string())
+        names = _one_array(all_names.take(pa.array(chosen[is_first])))
+        checks = xxh64(*octets_of(names), _CHECK_SEED)
+        again = np.flatnonzero(~is_first)
+        names_again = _one_array(all_names.take(pa.array(chosen[again])))
+        clashing = xxh64(*octets_of(names_again), _CHECK_SEED) != checks[rank[again]]
+        return _Hosts(ids[is_first], names, checks, ranks, int(np.count_nonzero(clashing)))
+
+    def _write_edges(
+        self,
+        folder: GraphFolder,
+        plan: GridPlan,
+        number: int,
+        ranks: NDArray[np.int32],
+        host_bounds: NDArray[np.int64],
+    ) -> tuple[int, int]:
+        """Writes the edges, tile by tile; how many rows are edges, and how many link a host to itself."""
         if not self.sources:
-            return 0
-        source, destination = np.concatenate(self.sources), np.concatenate(self.destinations)
+            return 0, 0
+        source = ranks[np.concatenate(self.sources)]
+        destination = ranks[np.concatenate(self.destinations)]
         self.sources.clear()
         self.destinations.clear()
-        group = stripe_of(source, plan.stripes) * plan.build_groups // plan.stripes
-        tile = stripe_of(destination, plan.stripes) * plan.build_groups + group
+        links = np.concatenate(self.links) if self.links else None
+        linking = np.flatnonzero(source != destination)
+        self_links = len(source) - len(linking)
+        if self_links:
+            source, destination = source[linking], destination[linking]
+            links = None if links is None else links[linking]
+        tile = _tiles(plan, host_bounds, source, destination)
         n_tiles = plan.stripes * plan.build_groups
         # A stable sort of small integers is a radix sort.
-        order = np.argsort(tile.astype(np.min_scalar_type(n_tiles)), kind="stable")
+        order = np.argsort(tile, kind="stable")
         bounds = np.zeros(n_tiles + 1, np.int64)
         np.cumsum(np.bincount(tile, minlength=n_tiles), out=bounds[1:])
-        arrays: dict[str, NDArray[Any]] = {"bounds": bounds, "src": source[order], "dst": destination[order]}
-        if self.links:
-            arrays["links"] = np.concatenate(self.links)[order]
+        arrays: dict[str, NDArray[Any]] = {"bounds": bounds, "host_bounds": host_bounds}
+        arrays |= {"src": source[order], "dst": destination[order]}
+        if links is not None:
+            arrays["links"] = links[order]
         write_arrays(folder.scanned_edges(number), arrays)
-        return len(source)
+        return len(source), self_links
 
 
-def _hash(names: pa.Array, seed: int) -> NDArray[np.int64]:
-    """xxh64 of each name's bytes; a null's means nothing."""
-    return xxh64(*octets_of(names), seed)
+@dataclass(frozen=True)
+class _Hosts:
+    ids: NDArray[np.int64]
+    """Sorted and distinct: shape (hosts,)."""
+    names: pa.LargeStringArray
+    checks: NDArray[np.int64]
+    ranks: NDArray[np.int32]
+    """Rank in ``ids`` of what each number names: shape (numbers,); of unused ones it means nothing."""
+    clashes: int
+    """Values that name another host than the first one of the same id."""
+
+
+def _tiles(
+    plan: GridPlan, host_bounds: NDArray[np.int64], source: NDArray[np.int32], destination: NDArray[np.int32]
+) -> NDArray[np.unsignedinteger]:
+    """The tile of each edge: shape (edges,)."""
+    kind = np.min_scalar_type(plan.stripes * plan.build_groups)
+    hosts = np.diff(host_bounds)
+    groups = [plan.build_group_of(stripe) for stripe in range(plan.stripes)]
+    group_of = np.repeat(np.array(groups, kind), hosts)
+    row_of = np.repeat(np.arange(plan.stripes, dtype=kind) * kind.type(plan.build_groups), hosts)
+    tile: NDArray[np.unsignedinteger] = row_of[destination]
+    tile += group_of[source]
+    return tile
+
+
+def _one_array(chunks: pa.ChunkedArray) -> pa.LargeStringArray:
+    combined = chunks.combine_chunks()
+    return pa.concat_arrays(combined.chunks) if isinstance(combined, pa.ChunkedArray) else combined

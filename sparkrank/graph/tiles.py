@@ -1,8 +1,8 @@
 """Scanned edges → distinct edges of each tile, by position in their stripes.
 
-A tile gets all edges from one group of source stripes into one destination stripe.  Its task looks
-the ids up in the stripes' sorted ids, merges duplicates, and leaves the tile's part of the degrees
-beside the edges.
+A tile gets all edges from one group of source stripes into one destination stripe.  Its task turns the
+ranks of every piece into positions in the stripes, merges duplicates, and leaves the tile's part of the
+degrees beside the edges.
 """
 
 from __future__ import annotations
@@ -14,12 +14,11 @@ import numpy as np
 from numpy.typing import NDArray
 
 from sparkrank.arrays import narrow, read_arrays, write_arrays
-from sparkrank.errors import InputRefused, SparkrankError
+from sparkrank.errors import InputRefused
 from sparkrank.graph.folder import GraphFolder
 from sparkrank.graph.plan import GridPlan
 from sparkrank.kernels.edges import Edges, destinations, merge_duplicates, out_totals, pack_keys, sources
 from sparkrank.kernels.edges import split_by_stripe as split_keys
-from sparkrank.kernels.lookup import find_ids
 
 MAX_LINKS = 2.0**62
 """Page links that one tile, and one host, may have: their sums must stay exact in 64 bits."""
@@ -44,40 +43,30 @@ class TileTask:
 
     def __call__(self, tile: int) -> int:
         stripe, group = divmod(tile, self.plan.build_groups)
-        parts: dict[str, list[NDArray[np.int64]]] = {"src": [], "dst": [], "links": []}
+        of_group = self.plan.stripes_of_build_group(group)
+        rows = {s: _PieceRows(self.folder, s) for s in {stripe, *of_group}}
+        keys, links = [np.zeros(0, np.int64)], [np.zeros(0, np.int64)]
         for piece in self.pieces:
             found = read_arrays(self.folder.scanned_edges(piece))
-            first, end = found["bounds"][tile : tile + 2].tolist()
-            for name in parts:
-                if name in found:
-                    parts[name].append(found[name][first:end])
-        source_ids, destination_ids = np.concatenate(parts["src"]), np.concatenate(parts["dst"])
-        weights = np.concatenate(parts["links"]) if self.weighted else None
+            part = slice(*found["bounds"][tile : tile + 2].tolist())
+            if part.start == part.stop:
+                continue
+            # A look-up of small tables an end: ranks of the piece's hosts to fields of keys.
+            source = [pack_keys(at, 0, rows[s].of(piece)) for at, s in enumerate(of_group)]
+            destination = pack_keys(0, rows[stripe].of(piece), 0)
+            first_rank = found["host_bounds"]
+            here = np.concatenate(source).take(found["src"][part] - first_rank[of_group[0]])
+            here += destination.take(found["dst"][part] - first_rank[stripe])
+            keys.append(here)
+            if self.weighted:
+                links.append(found["links"][part])
+        weights = np.concatenate(links) if self.weighted else None
         if weights is not None and weights.sum(dtype=np.float64) >= MAX_LINKS:
             raise too_many_links()
-        edges = self._merge(stripe, group, source_ids, destination_ids, weights)
+        edges = merge_duplicates(np.concatenate(keys), weights)
         if len(edges.keys):
             self._write(stripe, group, edges)
         return len(edges.keys)
-
-    def _merge(
-        self,
-        stripe: int,
-        group: int,
-        source_ids: NDArray[np.int64],
-        destination_ids: NDArray[np.int64],
-        weights: NDArray[np.int64] | None,
-    ) -> Edges:
-        """Ids to positions, then one sort."""
-        stripes = self.plan.stripes_of_build_group(group)
-        stripe_ids = [read_arrays(self.folder.ids(s))["ids"] for s in stripes]
-        firsts = np.concatenate(([0], np.cumsum([len(ids) for ids in stripe_ids])))
-        destination = _positions(read_arrays(self.folder.ids(stripe))["ids"], destination_ids)
-        # Stripes are ranges of ids, so the ids of neighbouring stripes are sorted as they stand.
-        source = _positions(np.concatenate(stripe_ids), source_ids)
-        of_group = np.searchsorted(firsts, source, side="right") - 1
-        source -= firsts[of_group]
-        return merge_duplicates(pack_keys(of_group, destination, source), weights)
 
     def _write(self, stripe: int, group: int, edges: Edges) -> None:
         stripes = self.plan.stripes_of_build_group(group)
@@ -99,8 +88,13 @@ class TileTask:
         write_arrays(self.folder.tile_degrees(stripe, group), degrees)
 
 
-def _positions(sorted_ids: NDArray[np.int64], ids: NDArray[np.int64]) -> NDArray[np.int64]:
-    found = find_ids(sorted_ids, ids)
-    if len(found) and found.min() < 0:
-        raise SparkrankError("an edge names a host that the graph does not have; remove the work folder")
-    return found
+class _PieceRows:
+    """Positions in a stripe of the hosts of each piece."""
+
+    def __init__(self, folder: GraphFolder, stripe: int) -> None:
+        self._found = read_arrays(folder.scanned_rows(stripe))
+
+    def of(self, piece: int) -> NDArray[np.int64]:
+        """Those of one piece in the order of their ranks."""
+        first, end = self._found["bounds"][piece : piece + 2].tolist()
+        return self._found["rows"][first:end].astype(np.int64)

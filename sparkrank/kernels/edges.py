@@ -29,10 +29,13 @@ class Edges(NamedTuple):
 
 
 def pack_keys(
-    stripe: NDArray[np.int64], destination: NDArray[np.int64], source: NDArray[np.int64]
+    stripe: NDArray[np.int64] | int, destination: NDArray[np.int64] | int, source: NDArray[np.int64] | int
 ) -> NDArray[np.int64]:
-    """Keys of edges from (source stripe in the group, source in the stripe) to destination."""
-    return (stripe << (2 * _HOST_BITS)) | (destination << _HOST_BITS) | source
+    """Keys of edges from (source stripe in the group, source in the stripe) to destination.
+
+    Keys of parts, with 0 for what is left out, add up.
+    """
+    return np.asarray((stripe << (2 * _HOST_BITS)) | (destination << _HOST_BITS) | source)
 
 
 def destinations(keys: NDArray[np.int64]) -> NDArray[np.int64]:
