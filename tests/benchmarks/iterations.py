@@ -179,27 +179,28 @@ def _smallest_residual(system: System, pairs: list[tuple[Floats, Floats]]) -> Fl
     return np.ascontiguousarray(combine([after.T for _, after in pairs], weights).T)
 
 
-def differences(n_stripes: int, system: System, tolerance: float) -> Outcome:
+def differences(n_stripes: int | None, system: System, tolerance: float) -> Outcome:
     """Residuals alone travel, and those of a stripe that are all within the tolerance stay where they are.
 
     With r = A·x + u - x kept up to date, a step adds the residuals of the unsettled stripes to x and sends
     them along their links; what a settled stripe still receives piles up there, and may unsettle it again.
-    At the end no residual is above the tolerance, so neither is the error's share of PageRank.
+    At the end no residual is above the tolerance, so neither is the error's share of PageRank.  Without a
+    number of stripes every host is one: the least that any cut could leave to multiply.
     """
-    stripes = _ranges(system.n_hosts, n_stripes)
+    stripes = _ranges(system.n_hosts, min(system.n_hosts, n_stripes or system.n_hosts))
+    starts = [stripe.start for stripe in stripes]
+    sizes = [stripe.stop - stripe.start for stripe in stripes]
     links = np.bincount(system.matrix.indices, minlength=system.n_hosts)
     value = system.teleport.copy()
     residual = plain(system, value) - value
     skipped: list[float] = []
     for _ in range(_MAX_STEPS):
-        largest = np.array([np.abs(residual[stripe]).max(initial=0.0) for stripe in stripes])
+        largest = np.maximum.reduceat(np.abs(residual).max(axis=1), starts)
         if largest.max() <= tolerance:
             break
-        moved, left_out = residual.copy(), 0
-        for at in np.flatnonzero(largest <= tolerance).tolist():
-            moved[stripes[at]] = 0.0
-            left_out += int(links[stripes[at]].sum())
-        skipped.append(left_out / int(links.sum()))
+        moving = np.repeat(largest > tolerance, sizes)
+        skipped.append(float(links[~moving].sum() / links.sum()))
+        moved = np.where(moving[:, None], residual, 0.0)
         value += moved
         residual += system.matrix @ moved - moved
     bound = float(largest.max())
@@ -225,5 +226,6 @@ WAYS: dict[str, Way] = {
     "differences, 4 stripes": partial(differences, 4),
     "differences, 16 stripes": partial(differences, 16),
     "differences, 256 stripes": partial(differences, 256),
+    "differences, single hosts": partial(differences, None),
 }
 """The ways by name, plain iteration first."""
