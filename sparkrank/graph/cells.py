@@ -9,6 +9,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 from dataclasses import dataclass
+from itertools import pairwise
 from typing import Any, NamedTuple
 
 import numpy as np
@@ -17,18 +18,14 @@ from numpy.typing import NDArray
 from sparkrank.arrays import read_arrays, read_static_arrays, write_arrays
 from sparkrank.graph.folder import GraphFolder
 from sparkrank.graph.plan import GridPlan
-from sparkrank.kernels.diagonals import Section, make_section
+from sparkrank.graph.sub_blocks import cut_sections
+from sparkrank.kernels.diagonals import Section
 from sparkrank.kernels.edges import destinations, sources
 from sparkrank.places import Place
 
-# 2^16 offsets fit 16 bits, and their 0.5 MB a column fit a core's cache with room for the sums …
-_SUB_BLOCK_SOURCES = 1 << 16
-# … but every row of a section costs a scattered addition: sub-blocks widen to 2 MB a column, a core's
-# whole cache, while rows have fewer edges than this on average …
-_RUN_EDGES = 4
-_WIDE_SUB_BLOCK_SOURCES = 1 << 18
-# … and further while a section has fewer edges than numpy's calls are worth.
-_SUB_BLOCK_EDGES = 1 << 17
+# A phase and a position in it in one number: hosts of a stripe have 28 bits.
+_PHASE_SHIFT = 32
+_IN_PHASE = (1 << _PHASE_SHIFT) - 1
 
 # Columns of a cell's table; "at" is an index into the pool the section's values lie in.
 _FIELDS = (
@@ -75,95 +72,54 @@ class CellWriter:
         stripe, group = self.tiles[number]
         tile = read_arrays(self.folder.tile(stripe, group))
         bounds = tile["bounds"]
-        position = self._positions(stripe)
+        into = self._phased(stripe)
         placed: list[PlacedSection] = []
         for at, source_stripe in enumerate(self.plan.stripes_of_build_group(group)):
             part = slice(int(bounds[at]), int(bounds[at + 1]))
             keys = tile["keys"][part]
-            if not len(keys):
-                continue
-            weights = tile["weights"][part] if "weights" in tile else None
-            source_position = self._positions(source_stripe)
-            edges = (position[destinations(keys)], source_position[sources(keys)], weights)
-            placed += self._sections(stripe, source_stripe, *edges)
+            if len(keys):
+                weights = tile["weights"][part] if "weights" in tile else None
+                out_of = into if source_stripe == stripe else self._phased(source_stripe)
+                edges = (into.take(destinations(keys)), out_of.take(sources(keys)), weights)
+                placed += self._sections(source_stripe, *edges)
         placed.sort(key=lambda one: one[:4])
         stamp = write_cell(self.folder.cell(stripe, group), placed)
         return {"bytes": stamp.size, "crc32": stamp.crc32}
 
-    def _positions(self, stripe: int) -> NDArray[np.int64]:
-        return read_arrays(self.folder.order(stripe))["position"].astype(np.int64)
+    def _phased(self, stripe: int) -> NDArray[np.int64]:
+        """Phase and position in the phase of the stripe's hosts, in the order of their ids."""
+        position = read_arrays(self.folder.order(stripe))["position"].astype(np.int64)
+        starts = np.array(self.phase_starts[stripe])
+        # Phases may be empty: "right" takes the last phase that starts here.
+        phase = np.searchsorted(starts, position, side="right") - 1
+        phased: NDArray[np.int64] = phase << _PHASE_SHIFT | (position - starts[phase])
+        return phased
 
     def _sections(
         self,
-        stripe: int,
         source_stripe: int,
         destination: NDArray[np.int64],
         source: NDArray[np.int64],
         weights: NDArray[np.int64] | None,
     ) -> Iterator[PlacedSection]:
-        to_starts, from_starts = (np.array(self.phase_starts[s]) for s in (stripe, source_stripe))
-        to_phase = _phase_of(to_starts, destination)
-        from_phase = _phase_of(from_starts, source)
-        n_phases = len(to_starts) - 1
-        kind = to_phase * n_phases + from_phase
-        for value in np.unique(kind):
-            chosen = np.flatnonzero(kind == value)
-            into, out_of = divmod(int(value), n_phases)
-            first, end = int(from_starts[out_of]), int(from_starts[out_of + 1])
-            sub_blocks = _cut(
-                destination[chosen] - to_starts[into],
-                source[chosen] - first,
-                None if weights is None else weights[chosen],
-                end - first,
-            )
-            for first_source, n_sources, section in sub_blocks:
-                yield PlacedSection(into, source_stripe, out_of, first_source, n_sources, section)
-
-
-def _phase_of(starts: NDArray[np.int64], position: NDArray[np.int64]) -> NDArray[np.int64]:
-    # Phases may be empty: "right" takes the last phase that starts here.
-    return np.searchsorted(starts, position, side="right") - 1
-
-
-def _cut(
-    destination: NDArray[np.int64],
-    source: NDArray[np.int64],
-    weights: NDArray[np.int64] | None,
-    n_sources: int,
-) -> Iterator[tuple[int, int, Section]]:
-    """Cuts edges of one pair of phases into sub-blocks of sources."""
-    n_rows = int(destination.max()) + 1
-    span = _sub_block_span(len(source), n_rows, n_sources)
-    block, offset = np.divmod(source, span)
-    # One key a (block, destination, offset): at most sources x destinations of a stripe, below 2^56.
-    key = (block * n_rows + destination) * span + offset
-    if weights is None:
-        key.sort()
-    else:
-        order = np.argsort(key, kind="stable")
-        key, weights = key[order], weights[order]
-    rest, offset = np.divmod(key, span)
-    block, destination = np.divmod(rest, n_rows)
-    cuts = np.searchsorted(block, np.arange(-(-n_sources // span) + 1))
-    for number, (low, high) in enumerate(zip(cuts[:-1].tolist(), cuts[1:].tolist(), strict=True)):
-        if low < high:
+        from_starts = self.phase_starts[source_stripe]
+        n_phases = len(from_starts) - 1
+        kind = ((destination >> _PHASE_SHIFT) * n_phases + (source >> _PHASE_SHIFT)).astype(np.uint8)
+        # A stable sort of small integers is a radix sort.
+        order = np.argsort(kind, kind="stable")
+        destination, source = destination[order] & _IN_PHASE, source[order] & _IN_PHASE
+        weights = None if weights is None else weights[order]
+        ends = np.cumsum(np.bincount(kind, minlength=n_phases * n_phases)).tolist()
+        for value, (low, high) in enumerate(pairwise([0, *ends])):
+            if low == high:
+                continue
+            to_phase, from_phase = divmod(value, n_phases)
             part = slice(low, high)
+            n_sources = from_starts[from_phase + 1] - from_starts[from_phase]
             chosen = None if weights is None else weights[part]
-            section = make_section(destination[part], offset[part], chosen)
-            yield number * span, min(span, n_sources - number * span), section
-
-
-def _sub_block_span(n_edges: int, n_rows: int, n_sources: int) -> int:
-    """Sources of a sub-block: about equal ones, narrow enough for a cache, wide enough to pay."""
-    span = _SUB_BLOCK_SOURCES
-    while span < n_sources:
-        edges = n_edges * span / n_sources
-        short_runs = edges < _RUN_EDGES * n_rows and span < _WIDE_SUB_BLOCK_SOURCES
-        if not short_runs and edges >= _SUB_BLOCK_EDGES:
-            break
-        span *= 2
-    n_blocks = -(-n_sources // span)
-    return -(-n_sources // n_blocks)
+            sections = cut_sections(destination[part], source[part], chosen, n_sources)
+            for first_source, span, section in sections:
+                yield PlacedSection(to_phase, source_stripe, from_phase, first_source, span, section)
 
 
 def write_cell(place: Place, placed: list[PlacedSection]) -> Any:

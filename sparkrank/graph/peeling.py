@@ -15,6 +15,7 @@ from numpy.typing import NDArray
 from sparkrank.arrays import narrow, read_arrays, write_arrays
 from sparkrank.graph.folder import GraphFolder
 from sparkrank.graph.plan import GridPlan
+from sparkrank.graph.sub_blocks import HOT_SOURCES
 from sparkrank.graph.tiles import MAX_LINKS, too_many_links
 from sparkrank.kernels import peel
 from sparkrank.kernels.edges import destinations, sources
@@ -192,7 +193,7 @@ class _Gather:
 
 @dataclass(frozen=True)
 class _Order:
-    """For one stripe: hosts sorted by phase, then id; what the solve reads, in that order."""
+    """For one stripe: the order of its hosts; what the solve reads, in that order."""
 
     peeling: Peeling
     after: str
@@ -203,13 +204,12 @@ class _Order:
         folder = self.peeling.folder
         codes = self.peeling.codes(self.after, stripe)
         phase = peel.phase_of(codes, self.source_rounds, self.sink_rounds)
-        by_phase = np.argsort(phase, kind="stable")
-        position = np.empty(len(codes), dtype=np.int64)
-        position[by_phase] = np.arange(len(codes))
         degrees = read_arrays(folder.degrees(stripe))
+        order = peel.order_in_phases(phase, degrees["in_degree"], degrees["out_degree"], HOT_SOURCES)
+        position = np.empty(len(codes), dtype=np.uint32)
+        position[order] = np.arange(len(codes), dtype=np.uint32)
         # Where edges weigh 1, a host's weight is its degree.
-        out_weight = degrees["out_weight" if self.peeling.weighted else "out_degree"][by_phase]
-        arrays = {"position": position.astype(np.uint32), "out_weight": out_weight}
-        write_arrays(folder.order(stripe), arrays)
+        out_weight = degrees["out_weight" if self.peeling.weighted else "out_degree"][order]
+        write_arrays(folder.order(stripe), {"position": position, "out_weight": out_weight})
         n_phases = self.source_rounds + self.sink_rounds + 1
-        return [int(start) for start in np.searchsorted(phase[by_phase], np.arange(n_phases + 1))]
+        return [int(start) for start in np.searchsorted(phase[order], np.arange(n_phases + 1))]

@@ -51,3 +51,25 @@ def phase_of(codes: NDArray[np.int8], source_rounds: int, sink_rounds: int) -> N
     return np.where(
         codes >= 0, (codes - 1) % (source_rounds + 1), source_rounds + sink_rounds + 1 + codes
     ).astype(np.int8)
+
+
+def order_in_phases(
+    phase: NDArray[np.int8], in_degree: NDArray[np.integer], out_degree: NDArray[np.integer], n_hot: int
+) -> NDArray[np.int64]:
+    """The hosts in the order of computation, those of a phase so that its edges lie close together.
+
+    A phase begins with its ``n_hot`` hosts of most out-links, which most of its edges come from.  Hosts of
+    most in-links come first among these and among the others: rows with as many in-links are neighbours.
+    Ties go by place.  Shapes (n,).
+    """
+    out_links = out_degree.astype(np.int64)
+    by_out_links = np.argsort(
+        phase.astype(np.int64) << 56 | (out_links.max(initial=0) - out_links), kind="stable"
+    )
+    counts = np.bincount(phase, minlength=1)
+    rank = np.empty(len(phase), dtype=np.int64)
+    rank[by_out_links] = np.arange(len(phase)) - np.repeat(np.cumsum(counts) - counts, counts)
+    is_cold = (rank >= n_hot) & (out_links > 0)
+    in_links = in_degree.astype(np.int64)
+    part = phase.astype(np.int64) << 1 | is_cold
+    return np.argsort(part << 48 | (in_links.max(initial=0) - in_links), kind="stable")
