@@ -19,6 +19,7 @@ from sparkrank.entry import JobContext
 from sparkrank.errors import InputRefused
 from sparkrank.evidence.candidates import spam_candidates
 from sparkrank.evidence.cautions import CoreStrength, core_strength
+from sparkrank.evidence.support import gather_support
 from sparkrank.graph.build import Graph, build_graph
 from sparkrank.inputs import InputFacts, check_edges, check_hosts
 from sparkrank.names.lists import HostLists, read_lists
@@ -31,7 +32,7 @@ from sparkrank.publish.manifest import Manifest, check_run, write_manifest
 from sparkrank.publish.records import StepRecord, adopt, commit_step, missing_file
 from sparkrank.publish.write import publish_table
 from sparkrank.scores.host_scores import host_scores
-from sparkrank.tables import HOST_SCORES, REJECTED_ROWS, SPAM_CANDIDATES
+from sparkrank.tables import CANDIDATE_SUPPORT, HOST_SCORES, REJECTED_ROWS, SPAM_CANDIDATES
 
 if TYPE_CHECKING:
     from pyspark.sql import DataFrame
@@ -76,7 +77,7 @@ class RunInputs:
 
     @property
     def run_fingerprint(self) -> str:
-        return self.fingerprint("names", "graph", "solve", "mass", "candidates")
+        return self.fingerprint("names", "graph", "solve", "mass", "candidates", "evidence")
 
 
 class InputCheck:
@@ -163,27 +164,46 @@ def scored_before(context: JobContext, inputs: RunInputs) -> StepRecord:
 
 
 def rank(context: JobContext, inputs: RunInputs, scored: StepRecord) -> StepRecord:
-    """Publishes ``spam_candidates``."""
+    """Publishes ``spam_candidates`` and ``candidate_support``."""
     fingerprint = inputs.run_fingerprint
     if (record := adopt(context.run, "rank_candidates", fingerprint)) is not None:
         log.info("candidates: done before")
         return record
     strength = _strength(context.config, scored)
-    paths = [context.run.output.below(file.path).uri for file in scored.tables["host_scores"].files]
-    candidates = spam_candidates(context.spark.read.parquet(*paths), context.config.candidates, strength)
-    table = publish_table(candidates, SPAM_CANDIDATES, context.run)
+    scores = [context.run.output.below(file.path) for file in scored.tables["host_scores"].files]
+    found = gather_support(
+        context.spark,
+        build(context, inputs),
+        resolve(context.config.run.work).child("evidence", fingerprint[:24]),
+        scores,
+        inputs.lists.core,
+        context.config.candidates,
+        context.config.evidence,
+        damping=context.config.solve.damping,
+    )
+    rows = context.spark.read.parquet(*(place.uri for place in scores))
+    measures = found.measures_frame(context.spark)
+    candidates = spam_candidates(rows, measures, context.config.candidates, strength)
+    tables = {
+        "spam_candidates": publish_table(candidates, SPAM_CANDIDATES, context.run),
+        "candidate_support": publish_table(
+            found.support_frame(context.spark), CANDIDATE_SUPPORT, context.run
+        ),
+    }
     candidates.sparkSession.catalog.clearCache()
     record = StepRecord(
         step="rank_candidates",
         fingerprint=fingerprint,
-        tables={"spam_candidates": table},
+        tables=tables,
         facts={
             "core_start": strength.start,
             "boosters_hidden_by_core_link": strength.hidden_boosters,
             "cautions": strength.cautions,
+            "evidence": found.facts(),
         },
     )
     commit_step(context.run, record)
+    found.folder.place.delete_tree()
     return record
 
 
@@ -191,6 +211,8 @@ def conclude(context: JobContext, inputs: RunInputs, scored: StepRecord, ranked:
     """Writes the manifest, which makes the run count, and removes what it replaces."""
     known = inputs.lists.known_spam
     core = inputs.lists.core
+    core_strength_facts = dict(ranked.facts)
+    evidence = core_strength_facts.pop("evidence")
     manifest = Manifest(
         run_id=context.run.run_id,
         attempt=context.run.attempt_id,
@@ -207,7 +229,8 @@ def conclude(context: JobContext, inputs: RunInputs, scored: StepRecord, ranked:
                 "known_spam": known and {"fingerprint": known.fingerprint, "rows": known.rows},
             },
             "graph": scored.facts["graph"],
-            "core": {**scored.facts["core"], **ranked.facts},
+            "core": {**scored.facts["core"], **core_strength_facts},
+            "evidence": evidence,
             "columns": scored.facts["columns"],
         },
     )

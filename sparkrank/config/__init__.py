@@ -8,6 +8,7 @@ from sparkrank.config.load import load_config
 from sparkrank.config.sections import (
     Candidates,
     Config,
+    Evidence,
     Graph,
     Input,
     Mass,
@@ -20,6 +21,7 @@ from sparkrank.config.sections import (
 __all__ = [
     "Candidates",
     "Config",
+    "Evidence",
     "Graph",
     "Input",
     "Mass",

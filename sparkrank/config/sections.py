@@ -197,6 +197,44 @@ class Candidates:
 
 
 @dataclasses.dataclass(frozen=True, kw_only=True)
+class Evidence:
+    """How much is gathered on where a candidate's rank comes from."""
+
+    followed_links: int = setting(
+        Kind.INTEGER,
+        "Links followed back in a step for one candidate at most, its own in-links aside.",
+        default=10_000,
+        reason="a ten-thousandth of a score a link is finer than anybody reads",
+        expected="a whole number of at least 1",
+        accepts=lambda v: v >= 1,
+    )
+    all_followed_links: int = setting(
+        Kind.INTEGER,
+        "Links followed back in a step for all candidates together, about; each gets an even part.",
+        default=1 << 22,
+        reason="keeps the evidence of a long list cheaper than the solve; some seconds of a core a step",
+        expected="a whole number of at least 1",
+        accepts=lambda v: v >= 1,
+    )
+    max_steps: int = setting(
+        Kind.INTEGER,
+        "Links back from a candidate after which paths are followed no further.",
+        default=20,
+        reason="at damping 0.85 what goes around a farm for longer is 4% of it",
+        expected="a whole number from 3 to 200",
+        accepts=lambda v: 3 <= v <= 200,
+    )
+    listed_sources: int = setting(
+        Kind.INTEGER,
+        "Sources listed for each candidate and kind at most.",
+        default=100,
+        reason="more than a reviewer reads; the unexplained share says what is left",
+        expected="a whole number of at least 1",
+        accepts=lambda v: v >= 1,
+    )
+
+
+@dataclasses.dataclass(frozen=True, kw_only=True)
 class Config:
     """The whole configuration, one attribute a section."""
 
@@ -207,6 +245,7 @@ class Config:
     solve: Solve
     mass: Mass
     candidates: Candidates
+    evidence: Evidence
 
     def as_dict(self) -> dict[str, dict[str, Any]]:
         """The settings by section and key, of JSON types only."""
@@ -224,6 +263,7 @@ SECTIONS: dict[str, type[Any]] = {
     "solve": Solve,
     "mass": Mass,
     "candidates": Candidates,
+    "evidence": Evidence,
 }
 """The section classes by name, in the order in which they are read, checked and described."""
 

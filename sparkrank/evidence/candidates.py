@@ -29,8 +29,10 @@ def priority() -> Column:
     return sf.when(sf.col("absolute_mass") > 0, by_mass).otherwise(sf.col("relative_mass"))
 
 
-def spam_candidates(scores: DataFrame, thresholds: Candidates, strength: CoreStrength) -> DataFrame:
-    """The table ``spam_candidates`` from the rows of ``host_scores``."""
+def spam_candidates(
+    scores: DataFrame, measures: DataFrame, thresholds: Candidates, strength: CoreStrength
+) -> DataFrame:
+    """The table ``spam_candidates`` from the rows of ``host_scores`` and the candidates' measures."""
     from pyspark.sql import functions as sf
 
     over = (
@@ -39,7 +41,7 @@ def spam_candidates(scores: DataFrame, thresholds: Candidates, strength: CoreStr
         & ~sf.col("is_core")
     )
     bare = bare_suffixes(scores).withColumn("is_bare", sf.lit(True))
-    chosen = scores.where(over)
+    chosen = scores.where(over).join(measures, "host", "left")
     chosen = chosen.join(sf.broadcast(bare), sf.col("suffix").eqNullSafe(sf.col("bare_suffix")), "left")
     chosen = chosen.withColumn("is_bare_suffix", sf.coalesce(sf.col("is_bare"), sf.lit(False)))
     chosen = chosen.withColumn("cautions", caution_column(strength, thresholds.min_relative_mass))

@@ -69,6 +69,12 @@ def test_defaults_are_the_documented_ones(tmp_path: Path) -> None:
         "solve": {"damping": 0.85, "tolerance": 1e-6, "max_steps": 200, "max_columns": 8},
         "mass": {"good_share": 0.85},
         "candidates": {"min_scaled_pagerank": 10.0, "min_relative_mass": 0.5},
+        "evidence": {
+            "followed_links": 10_000,
+            "all_followed_links": 4_194_304,
+            "max_steps": 20,
+            "listed_sources": 100,
+        },
     }
     assert json.loads(json.dumps(config.as_dict())) == config.as_dict()
 
@@ -279,7 +285,7 @@ def test_unknown_names_come_with_the_nearest(tmp_path: Path) -> None:
     path = write(tmp_path, MINIMAL + "[candidate]\n")
     assert refusal(path) == (
         f"section candidate in {path}: expected one of run, input, names, graph, solve, mass, candidates, "
-        "found an unknown section; did you mean candidates?"
+        "evidence, found an unknown section; did you mean candidates?"
     )
     path = write(tmp_path, "damping = 0.5\n" + MINIMAL)
     assert refusal(path) == (
@@ -295,7 +301,7 @@ def test_unknown_names_come_with_the_nearest(tmp_path: Path) -> None:
     )
     assert refusal(None, "zzzz.qqqq=1") == (
         "section zzzz in --set: expected one of run, input, names, graph, solve, mass, candidates, "
-        "found an unknown section; remove it"
+        "evidence, found an unknown section; remove it"
     )
 
 
@@ -354,7 +360,7 @@ def test_places_out_of_reach_are_refused_by_name() -> None:
 def test_reference_has_every_setting() -> None:
     reference = describe_config()
     names = [f"{section}.{key}" for section in SECTIONS for key in settings_of(section)]
-    assert len(names) == 20
+    assert len(names) == 24
     for name in names:
         assert reference.count(f"  {name} (") == 1
     assert "run.id (required)" in reference

@@ -41,7 +41,31 @@ AGREED = {
         ("host", "string", False),
         ("priority", "double", False),
         *SCORES,
+        ("direct_unexplained_share", "double", False),
+        ("origin_unexplained_share", "double", False),
+        ("origin_error_share", "double", False),
         ("cautions", "array<string>", False),
+    ],
+    "candidate_support": [
+        ("host", "string", False),
+        ("kind", "string", False),
+        ("position", "int", False),
+        ("source", "string", False),
+        ("contribution", "double", False),
+        ("share", "double", False),
+        ("unexplained_share", "double", False),
+        ("distance", "int", False),
+        ("link_returned", "boolean", True),
+        ("same_domain", "boolean", False),
+        ("source_is_candidate", "boolean", False),
+        ("source_scaled_pagerank", "double", False),
+        ("source_trust", "double", False),
+        ("source_absolute_mass", "double", False),
+        ("source_relative_mass", "double", False),
+        ("source_in_degree", "long", False),
+        ("source_out_degree", "long", False),
+        ("source_is_core", "boolean", False),
+        ("source_core_distance", "int", True),
     ],
     "rejected_rows": [
         ("source", "string", False),
@@ -53,6 +77,7 @@ AGREED = {
 ORDERS = {
     "host_scores": ("host",),
     "spam_candidates": ("rank",),
+    "candidate_support": ("host", "kind", "position"),
     "rejected_rows": ("source", "row_value", "reason", "rows"),
 }
 
@@ -113,7 +138,8 @@ def test_reference_has_every_column() -> None:
 def test_tables_by_name() -> None:
     assert table_named("host_scores") is HOST_SCORES
     with pytest.raises(
-        KeyError, match="expected one of the tables host_scores, spam_candidates, rejected_rows"
+        KeyError,
+        match="expected one of the tables host_scores, spam_candidates, candidate_support, rejected_rows",
     ):
         table_named("scores")
     with pytest.raises(KeyError, match="table host_scores has no column rank"):

@@ -18,6 +18,7 @@ from sparkrank.evidence.cautions import (
     CoreStrength,
     core_strength,
 )
+from sparkrank.evidence.support import measures_schema
 from sparkrank.places import resolve
 from sparkrank.publish.attempts import RunFolder, new_attempt_id
 from sparkrank.publish.lock import hold_run
@@ -61,7 +62,7 @@ def candidates(
 ) -> list[dict[str, Any]]:
     """The candidates in the order of their ranks; a core member covers the suffix unless told otherwise."""
     given = [*rows, score(**COVERED)] if covered else rows
-    found = spam_candidates(frame(spark, given), thresholds, strength)
+    found = spam_candidates(frame(spark, given), measures(spark, given), thresholds, strength)
     return [row.asDict() for row in found.orderBy("rank").collect()]
 
 
@@ -70,6 +71,12 @@ def frame(spark, rows: list[dict[str, Any]]):
     return spark.createDataFrame(
         [tuple(row[name] for name in names) for row in rows], spark_schema(HOST_SCORES)
     )
+
+
+def measures(spark, rows: list[dict[str, Any]]):
+    """Measures of every host, told apart by nothing."""
+    names = measures_schema().names[1:]
+    return spark.createDataFrame([(row["host"], *[0.25] * len(names)) for row in rows], measures_schema())
 
 
 @pytest.fixture
@@ -234,7 +241,8 @@ def test_the_farm_that_a_core_link_hides() -> None:
 
 def test_no_candidates_are_an_empty_table(spark, tmp_path) -> None:
     output = resolve(str(tmp_path))
-    found = spam_candidates(frame(spark, [*NO_CANDIDATES, score(**COVERED)]), DEFAULTS, STRONG)
+    rows = [*NO_CANDIDATES, score(**COVERED)]
+    found = spam_candidates(frame(spark, rows), measures(spark, rows), DEFAULTS, STRONG)
     with hold_run(output, "run-1") as lock:
         run = RunFolder(output=output, run_id="run-1", attempt_id=new_attempt_id(), lock=lock)
         entry = publish_table(found, SPAM_CANDIDATES, run)
