@@ -3,17 +3,19 @@
 The question behind the order: how much of this score would be left if the hosts that exist for it were
 gone, and how many hosts with a standing of their own speak for it?
 
-    priority = s · K/(K + 2) · H^(1/3) · (1 - d/5) · log10(1 + M/(1 + I))
+    priority = s · (V·H)^(1/2) · (1 - d/5) · (1 - h/2) · r · log10(1 + M/(1/2 + I))
 
 - M, the *bound amount* (scaled): what comes from hosts whose walks lead here, but for what those
   have from outside: the sum of m·c·T[u, x]·(p_u - e_u); m captive weight, e outside support.
 - s, M's share of all that in-links contribute.
 - I, the *breadth of independent support*: sources count by e/(1 + e), from 0 for a host that nobody else
   supports to 1; one link among more than five counts for less, by 5 / out-links.
-- K, the number of bound sources, m/(1 + e) each: one or two are no farm.
-- H, how *alike* the sources are: chance that two of them, drawn by contribution, have about as many out-links
-  and in-links.
+- V, the *variety* of sources, and H, how *alike* they are.  Draw two by contribution: V is the chance that
+  they are two, low for what one strong source hands on; H that they have about as many out-links and as
+  many in-links, or are the same.  What is made has many sources of one kind.
 - d, the share from the candidate's own domain: an owner's sub-hosts may well support each other.
+- h, what the candidate hands on to higher candidates: they come first, it is looked at with them.
+- r, 1 where the core reaches, else 0.85: what it does not reach is unknown, and whole honest communities are.
 
 All but the logarithm are in [0, 1].  Becchetti, Castillo, Donato, Leonardi & Baeza-Yates, "Link-based
 characterization and detection of web spam", AIRWeb 2006, and Andersen et al., "Robust PageRank and locally
@@ -38,14 +40,16 @@ from sparkrank.kernels.sources import (
     owners,
 )
 
-FEW_SOURCES = 2.0
-"""Bound sources at which the order gives half: a single strong source is a legacy, not a farm."""
 FEW_LINKS = 5.0
 """Up to this many out-links a source speaks for each of them in full."""
+LEAST_BREADTH = 0.5
+"""Independent support where there is none: the first host that speaks for a candidate weighs most."""
 OWN_DOMAIN_LOSS = 0.2
-"""What support from the own domain alone costs: less than any other doubt, since farms share domains, too."""
-ALIKE_POWER = 1.0 / 3.0
-"""Alike sources are made up easily, unlike ones with little more work: the weakest of the factors."""
+"""What support from the own domain alone costs; little, since farms share domains, too."""
+HANDED_ON_LOSS = 0.5
+"""What handing all on to higher candidates costs."""
+NOT_REACHED = 0.85
+"""Unknown is not spam; nor is it proof of the contrary, and new farms are unreached as well."""
 _CLASSES_A_DOUBLING = 2
 _MOST_IN_LINKS = 5
 
@@ -68,6 +72,7 @@ class ShapeColumns(NamedTuple):
     """From sources that link to another candidate, too."""
     circling_share: NDArray[np.float64]
     """Mean of closeness - T: what comes here on longer ways, as in rings."""
+    source_variety: NDArray[np.float64]
     alike_sources: NDArray[np.float64]
     bound_amount: NDArray[np.float64]
     bound_share: NDArray[np.float64]
@@ -125,6 +130,7 @@ def shape_columns(links: DirectLinks, candidates: CandidateArrays, damping: floa
         unsupported_share=share(1.0 - standing),
         mutual_target_share=share(links.candidates > 1),
         circling_share=share(np.maximum(links.closeness - links.transition, 0.0)),
+        source_variety=np.where(total > 0, 1.0 - concentration(links, given, np.arange(len(given))), 0.0),
         alike_sources=concentration(links, given, degree_class(links)),
         bound_amount=add_by_candidate(links, given * captive * own_part),
         bound_share=share(captive * own_part),
@@ -133,10 +139,11 @@ def shape_columns(links: DirectLinks, candidates: CandidateArrays, damping: floa
     )
 
 
-def priority(shape: ShapeColumns) -> NDArray[np.float64]:
+def priority(shape: ShapeColumns, candidates: CandidateArrays) -> NDArray[np.float64]:
     """What candidates are ordered by, shape (n,); at least 0.  The formula is the module's."""
-    several = shape.bound_sources / (shape.bound_sources + FEW_SOURCES)
-    alike = shape.alike_sources**ALIKE_POWER
+    many_of_a_kind = np.sqrt(shape.source_variety * shape.alike_sources)
     domain = 1.0 - OWN_DOMAIN_LOSS * shape.own_domain_share
-    against_breadth = np.log10(1.0 + shape.bound_amount / (1.0 + shape.independent_breadth))
-    return shape.bound_share * several * alike * domain * against_breadth
+    first = 1.0 - HANDED_ON_LOSS * candidates.handed_on
+    known = np.where(candidates.core_reached, 1.0, NOT_REACHED)
+    amount = np.log10(1.0 + shape.bound_amount / (LEAST_BREADTH + shape.independent_breadth))
+    return shape.bound_share * many_of_a_kind * domain * first * known * amount

@@ -22,6 +22,9 @@ CLOSE_ENOUGH = 0.2
 OPEN_PAGE_LINKS = 10
 """Out-links of a page that links to whoever comes by; most sites' own choice is shorter."""
 
+# A link to a host that would hardly notice its loss is no support of it.
+_OWED = 0.01
+
 CLOSE, OPEN_PAGE, INDEPENDENT = 0, 1, 2
 KIND_NAMES = ("close", "open_page", "independent")
 """Words of the kinds, by number."""
@@ -64,6 +67,10 @@ class CandidateArrays(NamedTuple):
     circulating: NDArray[np.float64]
     """Score that reaches it over exactly two links from hosts v whose walks come here:
     the sum of p_v·r_2[v]·captive weight(closeness of v), the candidate itself among them with weight 1."""
+    handed_on: NDArray[np.float64]
+    """Share of its out-weight that goes to candidates of higher scores that have a hundredth or more of
+    theirs from it: see ``hands_on``."""
+    core_reached: NDArray[np.bool_]
 
 
 def captive_weight(closeness: NDArray[np.float64]) -> NDArray[np.float64]:
@@ -88,6 +95,18 @@ def closeness_of(
     distance : shape (m,), links of the shortest path.
     """
     return np.minimum(1.0, origin / (self_support * damping**distance))
+
+
+def hands_on(
+    transition: NDArray[np.float64],
+    score: NDArray[np.float64],
+    to_score: NDArray[np.float64],
+    damping: float,
+) -> NDArray[np.float64]:
+    """What a link from one candidate to another adds to ``handed_on``, shape (m,): its T, or 0 where the
+    other's score is not higher or owes it less than a hundredth."""
+    owed = damping * score * transition >= _OWED * to_score
+    return np.where((to_score > score) & owed, transition, 0.0)
 
 
 def owners(offsets: NDArray[np.int64]) -> NDArray[np.int64]:

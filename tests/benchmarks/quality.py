@@ -36,7 +36,7 @@ Order = Callable[[Gathered], NDArray[np.float64]]
 
 def by_priority(found: Gathered) -> NDArray[np.float64]:
     """The program's order."""
-    return priority(shape_columns(found.links, found.arrays, _DAMPING))
+    return priority(shape_columns(found.links, found.arrays, _DAMPING), found.arrays)
 
 
 def by_mass(found: Gathered) -> NDArray[np.float64]:

@@ -7,7 +7,13 @@ import scipy.sparse as sp
 from numpy.typing import NDArray
 
 from planting.web import BaseGraph, IntArray
-from sparkrank.kernels.sources import CandidateArrays, DirectLinks, captive_weight, closeness_of
+from sparkrank.kernels.sources import (
+    CandidateArrays,
+    DirectLinks,
+    captive_weight,
+    closeness_of,
+    hands_on,
+)
 
 DAMPING, GOOD_SHARE, LEAST_SCORE = 0.85, 0.85, 10.0
 _TOLERANCE = 1e-8
@@ -78,6 +84,8 @@ def gather(graph: BaseGraph) -> Gathered:
         domain=graph.domains[hosts],
         self_support=self_support,
         circulating=circulating,
+        handed_on=_handed_on(passed, hosts, score),
+        core_reached=trust[hosts] > 0,
     )
     mass = 1.0 - trust[hosts] / score[hosts]
     return Gathered(hosts=hosts, relative_mass=mass, links=links, arrays=arrays)
@@ -117,3 +125,10 @@ def _closeness(
     steps = distance.data.astype(np.int64) - 1
     close.data = closeness_of(origins.data, self_support[row], steps, DAMPING)
     return close
+
+
+def _handed_on(passed: sp.csr_matrix, hosts: IntArray, score: NDArray[np.float64]) -> NDArray[np.float64]:
+    between = passed[hosts][:, hosts].tocoo()
+    to, source, own = between.row, between.col, score[hosts]
+    handed = hands_on(between.data / DAMPING, own[source], own[to], DAMPING)
+    return np.bincount(source, weights=handed, minlength=len(hosts))

@@ -90,6 +90,8 @@ def gathered(
         domain=domain[host],
         self_support=gives[host, host],
         circulating=np.array(circulating, dtype=np.float64),
+        handed_on=np.zeros(len(host)),
+        core_reached=np.ones(len(host), dtype=np.bool_),
     )
     return Support(links, arrays, source, score, closeness, matrix)
 

@@ -6,6 +6,7 @@ from collections import Counter
 import numpy as np
 import pytest
 from numpy.testing import assert_allclose
+from numpy.typing import NDArray
 
 from sparkrank.kernels.shape import ShapeColumns, concentration, priority, shape_columns
 from sparkrank.kernels.sources import outside_support
@@ -18,9 +19,13 @@ def shape_of(support: Support) -> ShapeColumns:
     return shape_columns(support.links, support.candidates, DAMPING)
 
 
+def priority_of(support: Support) -> NDArray[np.float64]:
+    return priority(shape_of(support), support.candidates)
+
+
 def order_value(edges: Edges, target: int = 0) -> float:
     n = 1 + max(max(edge) for edge in edges)
-    return float(priority(shape_of(gathered(n, edges, [target])))[0])
+    return float(priority_of(gathered(n, edges, [target]))[0])
 
 
 @pytest.mark.parametrize("seed", range(4))
@@ -48,6 +53,7 @@ def test_columns_against_plain_loops(seed: int) -> None:
             "own_domain_share": sum(given[i] for i in at if domains[support.sources[i]] == domains[x]),
             "mutual_target_share": sum(given[i] for i in at if chosen[support.sources[i]] > 1),
             "unsupported_share": sum(given[i] / (1 + outside[i]) for i in at),
+            "source_variety": total - sum(part**2 for part in given.values()) / total,
             "domain_concentration": sum(part**2 for part in by_domain.values()) / total,
             "suffix_concentration": sum(part**2 for part in by_suffix.values()) / total,
             "bound_share": sum(
@@ -76,14 +82,15 @@ def test_concentration_of_candidates_without_links_or_weight_is_zero() -> None:
     assert_allclose(concentration(links, np.array([1.0, 3.0]), links.domain), [0, 0.625, 0], rtol=1e-12)
     assert_allclose(concentration(links, np.zeros(2), links.domain), 0.0)
     empty = gathered(3, [(0, 1)], [0, 2])
-    assert_allclose(priority(shape_of(empty)), 0.0)
+    assert_allclose(priority_of(empty), 0.0)
 
 
 @pytest.mark.parametrize("k", [3, 30, 300])
 def test_a_one_way_star_has_the_priority_of_its_arithmetic(k: int) -> None:
-    """All factors 1 but k/(k + 2), and ck of bound amount."""
+    """All factors 1 but the variety, 1 - 1/k, and ck of bound amount against half an independent host."""
     edges = [(booster, 0) for booster in range(1, k + 1)]
-    assert_allclose(order_value(edges), k / (k + 2) * math.log10(1 + DAMPING * k), rtol=1e-12)
+    expected = math.sqrt(1 - 1 / k) * math.log10(1 + DAMPING * k / 0.5)
+    assert_allclose(order_value(edges), expected, rtol=1e-9, atol=0)
 
 
 def test_farms_of_other_shapes_are_bound_all_the_way_down() -> None:
@@ -124,21 +131,31 @@ def test_a_legacy_of_one_source_is_no_farm() -> None:
     assert order_value(handed_on) < order_value(direct) / 2
 
 
-def test_the_own_domain_takes_a_fifth() -> None:
+def test_what_else_takes_from_the_order() -> None:
     edges = [(booster, 0) for booster in range(1, 11)]
-    apart, own = (
-        priority(shape_of(gathered(11, edges, [0], domains)))[0] for domains in (list(range(11)), [7] * 11)
-    )
-    assert_allclose(own, apart * 0.8, rtol=1e-12)
+    apart = gathered(11, edges, [0])
+    whole, columns = priority_of(apart)[0], apart.candidates
+    own_domain = priority_of(gathered(11, edges, [0], [7] * 11))
+    not_reached = columns._replace(core_reached=np.array([False]))
+    handed_on = columns._replace(handed_on=np.array([0.5]))
+    assert_allclose(own_domain, whole * 0.8, rtol=1e-9)
+    assert_allclose(priority_of(apart._replace(candidates=not_reached)), whole * 0.85, rtol=1e-9)
+    assert_allclose(priority_of(apart._replace(candidates=handed_on)), whole * 0.75, rtol=1e-9)
 
 
 def test_relabelling_hosts_changes_nothing() -> None:
     edges = random_edges(25, 90, 11)
     moved = np.random.default_rng(5).permutation(25)
     renamed = [(int(moved[a]), int(moved[b])) for a, b in edges]
-    first = shape_of(gathered(25, edges, list(range(25))))
-    second = shape_of(gathered(25, renamed, moved.tolist()))
+    first_support = gathered(25, edges, list(range(25)))
+    second_support = gathered(25, renamed, moved.tolist())
+    first, second = shape_of(first_support), shape_of(second_support)
     # Suffixes follow the numbers, so they are the one column that may differ.
     for name in set(ShapeColumns._fields) - {"suffix_concentration"}:
         assert_allclose(getattr(second, name), getattr(first, name), rtol=1e-9, atol=1e-12, err_msg=name)
-    assert_allclose(priority(second), priority(first), rtol=1e-9, atol=1e-12)
+    assert_allclose(
+        priority(second, second_support.candidates),
+        priority(first, first_support.candidates),
+        rtol=1e-9,
+        atol=1e-12,
+    )

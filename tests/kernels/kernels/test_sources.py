@@ -11,6 +11,7 @@ from sparkrank.kernels.sources import (
     captive_weight,
     closeness_of,
     contributions,
+    hands_on,
     kind_sums,
     outside_support,
     source_kinds,
@@ -142,3 +143,9 @@ def test_kind_sums_of_a_candidate_without_links_and_of_one_that_lives_on_its_fee
     assert_array_equal(found.close_sources, [0, 0])
     assert_allclose(found.outside_feed, [0, contributions(support.links, DAMPING).sum()], rtol=1e-12)
     assert np.all(np.isnan(found.optimal_boosters))
+
+
+def test_a_link_hands_on_what_a_higher_candidate_owes_to_it() -> None:
+    """To a higher one; to a lower one; to a giant that would hardly notice."""
+    found = hands_on(np.array([0.5, 0.5, 0.5]), np.full(3, 20.0), np.array([30.0, 20.0, 900.0]), DAMPING)
+    assert_array_equal(found, [0.5, 0.0, 0.0])
