@@ -14,4 +14,5 @@ Read in the order of the data flow:
 - ``farms``: closed forms of farm arithmetic
 - ``sources``: what the direct sources of a candidate look like
 - ``shape``: the shape of a candidate's support, and the order in which to look at candidates
+- ``reasons``: what put a candidate there, and what else it may be
 """
