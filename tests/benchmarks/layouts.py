@@ -18,7 +18,7 @@ from crawl_names import mixed
 from measure import Facts
 from numpy.typing import NDArray
 
-from sparkrank.graph.cells import _cut
+from sparkrank.graph.sub_blocks import HOT_SOURCES, cut_sections
 from sparkrank.kernels import peel
 from sparkrank.kernels.accumulate import accumulate
 from sparkrank.kernels.diagonals import Section, make_section, section_edges
@@ -31,8 +31,7 @@ Cut = Callable[[Ints, Ints, None, int], Iterator[tuple[int, int, Section]]]
 _PEEL_ROUNDS = 3  # as in the product
 _SAMPLE_SHARE = 0.01  # of hosts or of links, for the boundaries of name ranges
 _LEAST_LOCAL = 8  # hosts of a domain from which links are led into it, as in the generator
-_HOT_HOSTS = 1 << 16  # as many as 16-bit offsets reach: half a megabyte a column
-_OTHER_HOSTS = 1 << 18  # two megabytes a column
+_EVEN_SOURCES = 1 << 18  # two megabytes a column
 _LARGEST_SECTION = 1 << 18  # edges: two megabytes of gathered values
 
 
@@ -166,23 +165,21 @@ def layouts(links: Links, core: Core, n_stripes: int) -> dict[str, Layout]:
     by_hash = links.hashed * n_stripes // links.n_hosts
     in_links = np.bincount(links.destination, minlength=links.n_hosts)
     out_links = np.bincount(links.source, minlength=links.n_hosts)
-    ends = links.by_name[links.destination]
     hot = _busiest(core, by_hash, out_links)
+    busy_first = (_by(links, -in_links, ~hot), _by(links, links.by_name, ~hot))
+    even_hosts = _name_ranges(links.by_name, links.by_name, n_stripes)
+    even_links = _name_ranges(links.by_name, links.by_name[links.destination], n_stripes)
     orders: dict[str, tuple[Ints, Ints, Cut]] = {
-        "hash": (by_hash, links.hashed, _cut),
-        "hash, capped": (by_hash, links.hashed, capped(_cut)),
-        "hash, most in-links first": (by_hash, _by(links, -in_links), _cut),
-        "hash, most out-links first": (by_hash, _by(links, -out_links), _cut),
-        "hash, reversed names": (by_hash, links.by_name, _cut),
-        "hash, busiest apart, in-links": (by_hash, _by(links, -in_links, ~hot), capped(hot_first)),
-        "hash, busiest apart, names": (by_hash, _by(links, links.by_name, ~hot), capped(hot_first)),
-        "names, equal hosts": (_name_ranges(links.by_name, links.by_name, n_stripes), links.by_name, _cut),
-        "names, equal in-links": (_name_ranges(links.by_name, ends, n_stripes), links.by_name, _cut),
-        "names, equal in-links, capped": (
-            _name_ranges(links.by_name, ends, n_stripes),
-            links.by_name,
-            capped(_cut),
-        ),
+        "hash, busiest apart, in-links": (by_hash, busy_first[0], cut_sections),
+        "hash, busiest apart, names": (by_hash, busy_first[1], cut_sections),
+        "hash, most out-links first": (by_hash, _by(links, -out_links), cut_sections),
+        "hash, most in-links first": (by_hash, _by(links, -in_links), cut_sections),
+        "hash, reversed names": (by_hash, links.by_name, cut_sections),
+        "hash": (by_hash, links.hashed, cut_sections),
+        "hash, even blocks": (by_hash, links.hashed, even_blocks),
+        "hash, even blocks, cut by rows": (by_hash, links.hashed, capped(even_blocks)),
+        "names, equal hosts": (even_hosts, links.by_name, cut_sections),
+        "names, equal in-links": (even_links, links.by_name, cut_sections),
     }
     return {
         name: make_layout(core, stripe[core.hosts], rank[core.hosts], n_stripes, cut)
@@ -200,7 +197,7 @@ def _busiest(core: Core, stripe: Ints, out_links: Ints) -> NDArray[np.bool_]:
     hot = np.zeros(len(stripe), dtype=np.bool_)
     for number in np.unique(stripe):
         members = core.hosts[stripe[core.hosts] == number]
-        hot[members[np.argsort(-out_links[members], kind="stable")[:_HOT_HOSTS]]] = True
+        hot[members[np.argsort(-out_links[members], kind="stable")[:HOT_SOURCES]]] = True
     return hot
 
 
@@ -235,11 +232,12 @@ def make_layout(core: Core, stripe: Ints, rank: Ints, n_stripes: int, cut: Cut) 
     return Layout(starts=starts, place=place, sections=sections)
 
 
-def hot_first(
+def even_blocks(
     destination: Ints, source: Ints, weights: None, n_sources: int
 ) -> Iterator[tuple[int, int, Section]]:
-    """Unequal sub-blocks: as many sources as 16 bits reach, then four times as many each."""
-    bounds = [0, *range(_HOT_HOSTS, n_sources, _OTHER_HOSTS), n_sources]
+    """Sub-blocks of equally many sources, a section each."""
+    n_blocks = -(-n_sources // _EVEN_SOURCES)
+    bounds = (np.arange(n_blocks + 1) * n_sources // n_blocks).tolist()
     n_rows = int(destination.max()) + 1
     key = ((np.searchsorted(bounds, source, side="right") - 1) * n_rows + destination) * n_sources + source
     key.sort()

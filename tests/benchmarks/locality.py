@@ -3,9 +3,10 @@
 The same graph is laid out in several ways (`layouts.py`), cut into sections and multiplied by the product's
 own kernel, in one thread:
 
-- hash ranges as stripes, hosts within a phase in the order of their hashes, of in-links or out-links (most
-  first), or of their reversed names (`example.co.site`), cut as the product cuts;
-- the same with the busiest hosts in a sub-block of their own, and sections of a largest size;
+- the product's: hash ranges as stripes, the busiest hosts of a phase apart, by in-links among them and among
+  the others, cut by the product's own code;
+- the same stripes and cutting with hosts in the order of out-links, in-links, reversed names
+  (`example.co.site`) or hashes; hashes with even sub-blocks, each a section or cut again by rows;
 - ranges of reversed names as stripes, hosts in the order of those names, with boundaries drawn from a sample
   of hosts or of the ends of links.
 

@@ -58,20 +58,17 @@ def test_every_way_keeps_its_bound_on_hosts_that_iterate(name, graph):
 
 def test_layouts_multiply_alike_and_a_wrong_one_is_noticed(monkeypatch):
     # So small a graph would be a single section.
-    monkeypatch.setattr("layouts._HOT_HOSTS", 50)
-    monkeypatch.setattr("layouts._OTHER_HOSTS", 200)
+    monkeypatch.setattr("layouts._EVEN_SOURCES", 200)
     monkeypatch.setattr("layouts._LARGEST_SECTION", 300)
     links = crawl_links(CrawlSettings(edges=40_000), local=0.3, suffix=0.3)
     core = iterated(links)
     found = layouts(links, core, n_stripes=3)
     check_products(found, core)
-    right = found["hash"]
-    assert len(found["hash, capped"].sections) > len(right.sections)
-    apart = found["hash, busiest apart, in-links"].sections
-    assert len({first for _, first, _, _ in apart}) > 3
-    assert {end - first for _, first, end, _ in apart} > {50}
-    # A cap cuts between rows: none is added in more parts.
-    assert found["hash, capped"].facts()["additions_an_edge"] == right.facts()["additions_an_edge"]
+    right, cut_again = found["hash, even blocks"], found["hash, even blocks, cut by rows"]
+    assert len({first for _, first, _, _ in right.sections}) > 3
+    assert len(cut_again.sections) > len(right.sections)
+    # Cut between rows: none is added in more parts.
+    assert cut_again.facts()["additions_an_edge"] == right.facts()["additions_an_edge"]
     wrong = dataclasses.replace(right, place=np.roll(right.place, 1))
     with pytest.raises(ValueError, match="wrong: the product is not that of the plain sum"):
         check_products({"wrong": wrong}, core)
