@@ -236,19 +236,29 @@ class _StepTask:
             inflow, n_edges = _core_inflow(solve, self.step, stripe, range(plan.build_groups))
         else:
             inflow, n_edges = self._add_partials(stripe)
-        score = inflow
-        score += read_arrays(folder.base(stripe))["base"]
+        base = read_arrays(folder.base(stripe))["base"]
+        before = read_arrays(state_before(folder, self.step, stripe))["flow"]
         factor = solve.flow_per_score(stripe, core)
-        flow = score * factor
-        before = read_arrays(state_before(solve.folder, self.step, stripe))["flow"]
-        # The change of the score itself: core hosts have out-links, so no factor is 0.
-        change = np.abs(flow - before)
-        change /= factor
-        stamp = write_arrays(folder.state(self.step, stripe), {"flow": flow})
+        largest_change, change_sum = [], []
+        pagerank_sum = 0.0
+        # Column by column, and the flow in the place of the score: what one line leaves in the cache, the
+        # next finds there.
+        for j, score in enumerate(inflow):
+            score += base[j]
+            if j == 0:
+                pagerank_sum = float(np.add.reduce(score))
+            flow = np.multiply(score, factor, out=score)
+            # The change of the score itself: core hosts have out-links, so no factor is 0.
+            change = flow - before[j]
+            np.abs(change, out=change)
+            change /= factor
+            largest_change.append(float(change.max(initial=0.0)))
+            change_sum.append(float(np.add.reduce(change)))
+        stamp = write_arrays(folder.state(self.step, stripe), {"flow": inflow})
         return {
-            "largest_change": [float(column.max(initial=0.0)) for column in change],
-            "change_sum": [float(np.add.reduce(column)) for column in change],
-            "pagerank_sum": float(np.add.reduce(score[0])),
+            "largest_change": largest_change,
+            "change_sum": change_sum,
+            "pagerank_sum": pagerank_sum,
             "edges": n_edges,
             "stamp": stamp.as_dict(),
         }
