@@ -8,8 +8,8 @@ gone, and how many hosts with a standing of their own speak for it?
 - M, the *bound amount* (scaled): what comes from hosts whose walks lead here, but for what those
   have from outside: the sum of m·c·T[u, x]·(p_u - e_u); m captive weight, e outside support.
 - s, M's share of all that in-links contribute.
-- I, the *breadth of independent support*: sources count by e/(1 + e), from 0 for a host that nobody else
-  supports to 1; one link among more than five counts for less, by 5 / out-links.
+- I, the *breadth of independent support*: sources count by their *standing* e/(e + 1/10), from 0 for a host
+  that nobody else supports to 1, and one link among d others counts 1/√d.
 - V, the *variety* of sources, and H, how *alike* they are.  Draw two by contribution: V is the chance that
   they are two, low for what one strong source hands on; H that they have about as many out-links and as
   many in-links, or are the same.  What is made has many sources of one kind.
@@ -40,8 +40,8 @@ from sparkrank.kernels.sources import (
     owners,
 )
 
-FEW_LINKS = 5.0
-"""Up to this many out-links a source speaks for each of them in full."""
+HALF_STANDING = 0.1
+"""Outside support that makes half a standing: what one of nine links of a host without in-links brings."""
 LEAST_BREADTH = 0.5
 """Independent support where there is none: the first host that speaks for a candidate weighs most."""
 OWN_DOMAIN_LOSS = 0.2
@@ -67,7 +67,7 @@ class ShapeColumns(NamedTuple):
     """The same over public suffixes."""
     own_domain_share: NDArray[np.float64]
     unsupported_share: NDArray[np.float64]
-    """Mean of 1/(1 + e): 1 where nobody else supports the sources."""
+    """Mean of 1 - standing: 1 where nobody else supports the sources."""
     mutual_target_share: NDArray[np.float64]
     """From sources that link to another candidate, too."""
     circling_share: NDArray[np.float64]
@@ -119,8 +119,8 @@ def shape_columns(links: DirectLinks, candidates: CandidateArrays, damping: floa
     support = outside_support(links, candidates, damping)
     captive = captive_weight(np.maximum(links.closeness, links.transition))
     own_part = np.divide(links.score - support, links.score)
-    standing = support / (1.0 + support)
-    testimony = np.minimum(1.0, FEW_LINKS / np.maximum(links.out_degree, 1))
+    standing = support / (support + HALF_STANDING)
+    testimony = 1.0 / np.sqrt(np.maximum(links.out_degree, 1))
     return ShapeColumns(
         exclusive_share=share(links.transition),
         returned_share=share(links.returned),

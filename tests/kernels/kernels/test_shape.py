@@ -52,7 +52,7 @@ def test_columns_against_plain_loops(seed: int) -> None:
             "returned_share": sum(given[i] for i in at if support.transition[x, support.sources[i]] > 0),
             "own_domain_share": sum(given[i] for i in at if domains[support.sources[i]] == domains[x]),
             "mutual_target_share": sum(given[i] for i in at if chosen[support.sources[i]] > 1),
-            "unsupported_share": sum(given[i] / (1 + outside[i]) for i in at),
+            "unsupported_share": sum(given[i] * 0.1 / (0.1 + outside[i]) for i in at),
             "source_variety": total - sum(part**2 for part in given.values()) / total,
             "domain_concentration": sum(part**2 for part in by_domain.values()) / total,
             "suffix_concentration": sum(part**2 for part in by_suffix.values()) / total,
@@ -65,7 +65,7 @@ def test_columns_against_plain_loops(seed: int) -> None:
         for name, value in expected.items():
             assert_allclose(getattr(found, name)[place], value / total, rtol=1e-12, atol=1e-15, err_msg=name)
         assert_allclose(found.bound_amount[place], expected["bound_share"], rtol=1e-12)
-        breadth = sum(outside[i] / (1 + outside[i]) * min(1, 5 / links.out_degree[i]) for i in at)
+        breadth = sum(outside[i] / (0.1 + outside[i]) / links.out_degree[i] ** 0.5 for i in at)
         assert_allclose(found.independent_breadth[place], breadth, rtol=1e-12, atol=1e-15)
 
 
