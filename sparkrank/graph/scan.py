@@ -30,7 +30,7 @@ from sparkrank.names.suffixes import SuffixRules
 # Tells two names of one id apart: any other seed will do.
 _CHECK_SEED = 0x5EED
 # Distinct values a row for which there is room from the start; crawls have fewer.
-_VALUES_A_ROW = 0.5
+_VALUES_A_ROW = 0.25
 
 
 @dataclass(frozen=True)
