@@ -3,7 +3,7 @@
 The question behind the order: how much of this score would be left if the hosts that exist for it were
 gone, and how many hosts with a standing of their own speak for it?
 
-    priority = s · (V·H)^(1/2) · (1 - d/5) · (1 - h/2) · r · log10(1 + M/(1/2 + I))
+    priority = s · (V·H)^(1/2) · (1 - d/5) · (1 - 4h/5) · r · log10(1 + M/(1/2 + I))
 
 - M, the *bound amount* (scaled): what comes from hosts whose walks lead here, but for what those
   have from outside: the sum of m·c·T[u, x]·(p_u - e_u); m captive weight, e outside support.
@@ -46,8 +46,8 @@ LEAST_BREADTH = 0.5
 """Independent support where there is none: the first host that speaks for a candidate weighs most."""
 OWN_DOMAIN_LOSS = 0.2
 """What support from the own domain alone costs; little, since farms share domains, too."""
-HANDED_ON_LOSS = 0.5
-"""What handing all on to higher candidates costs."""
+HANDED_ON_LOSS = 0.8
+"""What handing all on to a clearly higher candidate costs: it is that one's review that decides."""
 NOT_REACHED = 0.85
 """Unknown is not spam; nor is it proof of the contrary, and new farms are unreached as well."""
 _CLASSES_A_DOUBLING = 2

@@ -24,6 +24,7 @@ OPEN_PAGE_LINKS = 10
 
 # A link to a host that would hardly notice its loss is no support of it.
 _OWED = 0.01
+_CLEARLY_HIGHER = 1.2
 
 CLOSE, OPEN_PAGE, INDEPENDENT = 0, 1, 2
 KIND_NAMES = ("close", "open_page", "independent")
@@ -104,9 +105,12 @@ def hands_on(
     damping: float,
 ) -> NDArray[np.float64]:
     """What a link from one candidate to another adds to ``handed_on``, shape (m,): its T, or 0 where the
-    other's score is not higher or owes it less than a hundredth."""
+    other's score is not clearly higher or owes it less than a hundredth.
+
+    Partners of an alliance differ by little and hand nothing on; a tier differs from the next by much.
+    """
     owed = damping * score * transition >= _OWED * to_score
-    return np.where((to_score > score) & owed, transition, 0.0)
+    return np.where((to_score >= _CLEARLY_HIGHER * score) & owed, transition, 0.0)
 
 
 def owners(offsets: NDArray[np.int64]) -> NDArray[np.int64]:

@@ -38,7 +38,7 @@ def coast(seed: int, *, farms: bool) -> Finished:
     return Finished(graph=base, roles=roles, shapes=shapes, shape_names=("base", "lookalike"))
 
 
-def crawl(seed: int, *, edges: int = 1_000_000) -> BaseGraph:
+def crawl(seed: int, *, edges: int = 300_000) -> BaseGraph:
     """A crawl-like graph with a random core among hosts that link."""
     settings = CrawlSettings(edges=edges, seed=seed)
     parts = list(chunks(settings))

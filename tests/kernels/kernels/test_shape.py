@@ -140,7 +140,7 @@ def test_what_else_takes_from_the_order() -> None:
     handed_on = columns._replace(handed_on=np.array([0.5]))
     assert_allclose(own_domain, whole * 0.8, rtol=1e-9)
     assert_allclose(priority_of(apart._replace(candidates=not_reached)), whole * 0.85, rtol=1e-9)
-    assert_allclose(priority_of(apart._replace(candidates=handed_on)), whole * 0.75, rtol=1e-9)
+    assert_allclose(priority_of(apart._replace(candidates=handed_on)), whole * 0.6, rtol=1e-9)
 
 
 def test_relabelling_hosts_changes_nothing() -> None:
