@@ -6,7 +6,9 @@ fifty, with boosters left out and with boosters counted as wrong, and the share 
 the first k.  The formula was chosen on the shapes and seeds called "chosen on"; those called "left out" were
 not looked at until it stood.
 
-With `--base EDGES.parquet --core CORE.csv` the base is an edge table of one's own (src, dst; host, slice).
+With `--base EDGES.parquet --core CORE.csv` webs are planted into an edge table of one's own, too (src, dst;
+host, slice).  `--program N` puts N webs of each base through the whole program, and says how far its
+priorities are from the bench's, which follows paths by scipy.
 """
 
 import argparse
@@ -22,6 +24,7 @@ from planting.gathered import Gathered, gather
 from planting.judged import Figures, judge
 from planting.lookalikes import LOOKALIKES
 from planting.plan import LEFT_OUT_FARMS, LEFT_OUT_LOOKALIKES, plant
+from planting.program import ranked
 from planting.web import HELPER, TARGET, BaseGraph, Finished
 
 from sparkrank.kernels.shape import priority, shape_columns
@@ -86,12 +89,30 @@ def show(title: str, finished: Iterator[Finished]) -> None:
         print(f"  {name:14} {cells}", flush=True)
 
 
+def show_program(title: str, web: Finished) -> None:
+    """The program's own table beside the bench's figures, on one web."""
+    found = gather(web.graph)
+    hosts, values = ranked(web.graph)
+    place = np.argsort(hosts)
+    if not np.array_equal(hosts[place], found.hosts):
+        raise RuntimeError(f"{title}: the program has other candidates: {len(hosts)}, not {len(found.hosts)}")
+    ours = by_priority(found)
+    apart = np.abs(values[place] - ours) / np.maximum(ours, 1e-3)
+    print(f"{title}, the program: its priorities differ by {np.median(apart):.1%}, at most {apart.max():.1%}")
+    for name, order in (("bench", ours), ("program", values[place])):
+        cells = [
+            " ".join(f"{value:.3f}" for value in part) for part in figures(web, found, lambda _, by=order: by)
+        ]
+        print(f"  {name:14} {'  '.join(cells)}", flush=True)
+
+
 def main() -> None:
     """Print the table."""
     parser = argparse.ArgumentParser(description="Judge the order of candidates on planted webs.")
     parser.add_argument("--seeds", type=int, default=5, help="webs a row")
     parser.add_argument("--base", type=Path, help="Parquet with src, dst to plant into, besides the others")
     parser.add_argument("--core", type=Path, help="CSV with host of the good core of --base")
+    parser.add_argument("--program", type=int, default=0, help="webs a base to put through the program")
     arguments = parser.parse_args()
     seeds = range(_FIRST_LEFT_OUT_SEED, _FIRST_LEFT_OUT_SEED + arguments.seeds)
     print("AUC, precision, first fifty, look-alikes: without boosters, and with boosters counted as wrong")
@@ -104,6 +125,8 @@ def main() -> None:
         own = bases.of_table(arguments.base, arguments.core)
         places = {str(arguments.base.name): lambda _: own, **places}
     for place, base in places.items():
+        for web in webs(base, seeds[: arguments.program], left_out=True, hard=False):
+            show_program(f"{place}, mild, all shapes", web)
         for hard in (False, True):
             for left_out in (False, True):
                 shapes = "all shapes, left-out ones too" if left_out else "shapes chosen on"
