@@ -14,26 +14,21 @@ from typing import TYPE_CHECKING
 
 import pyarrow as pa
 import pyarrow.compute as pc
-import pyarrow.parquet as pq
 
 from sparkrank.errors import SparkrankError
 from sparkrank.places import Place
 from sparkrank.publish.attempts import RunFolder
-from sparkrank.publish.digest import FileRows, RowDigest, check_nulls, combine
+from sparkrank.publish.digest import FileRows, combine
 from sparkrank.publish.entries import FileEntry, TableEntry
 from sparkrank.publish.parts import TableParts, read_part
-from sparkrank.tables import ColumnType, TableSpec, arrow_schema, spark_schema
+from sparkrank.publish.table_file import DescribedTable, write_file
+from sparkrank.tables import TableSpec
 from sparkrank.tasks import TaskRunner
 
 if TYPE_CHECKING:
     from pyspark.sql import SparkSession
 
 _log = logging.getLogger(__name__)
-
-# Some MB: who asks for one key reads one row group, and the statistics of all fit into a footer.
-_ROW_GROUP_ROWS = 1 << 16
-# Where Spark looks for a table's own schema, with the descriptions of columns.
-_SPARK_SCHEMA_KEY = "org.apache.spark.sql.parquet.row.metadata"
 
 
 def publish_parts(spark: SparkSession, parts: TableParts, table: TableSpec, run: RunFolder) -> TableEntry:
@@ -47,11 +42,10 @@ def publish_parts(spark: SparkSession, parts: TableParts, table: TableSpec, run:
     rows_in = parts.rows_by_part
     task = _PartTask(
         parts=parts,
-        table=table,
+        described=DescribedTable.of(table),
         output=run.output,
         folder=run.table_name(table.name),
         first_rows=tuple(itertools.accumulate(rows_in, initial=0)),
-        spark_schema=spark_schema(table).json(),
     )
     with TaskRunner(spark, len(rows_in), even=True) as tasks:
         written: list[tuple[FileEntry, FileRows]] = tasks.run(task, f"files of {table.name}")
@@ -72,11 +66,14 @@ class _PartTask:
     """Writes the file of one part.  Done twice, it writes the same bytes under the same name."""
 
     parts: TableParts
-    table: TableSpec
+    described: DescribedTable
     output: Place
     folder: str
     first_rows: tuple[int, ...]
-    spark_schema: str
+
+    @property
+    def table(self) -> TableSpec:
+        return self.described.table
 
     def __call__(self, part: int) -> tuple[FileEntry, FileRows]:
         rows = read_part(self.parts.files, part).combine_chunks()
@@ -86,32 +83,8 @@ class _PartTask:
                 f"table {self.table.name}: expected {expected} rows in part {part}, found {rows.num_rows}; "
                 "remove the work folder and run again"
             )
-        digest = RowDigest(self.table, self.first_rows[part])
-        sink = pa.BufferOutputStream()
-        self._write_sorted(rows, sink, digest)
         path = f"{self.folder}/part-{part:05d}.parquet"
-        stamp = self.output.below(path).write_bytes(sink.getvalue())
-        entry = FileEntry(path=path, rows=rows.num_rows, bytes=stamp.size, digest="sha256:" + stamp.checksum)
-        return entry, digest.file_rows
-
-    def _write_sorted(self, rows: pa.Table, sink: pa.BufferOutputStream, digest: RowDigest) -> None:
-        order = self._order(rows)
-        schema = arrow_schema(self.table)
-        schema = schema.with_metadata({**schema.metadata, _SPARK_SCHEMA_KEY: self.spark_schema})
-        options = {
-            "compression": "zstd",
-            # Keys are distinct and scores nearly so: dictionaries pay for other strings and small numbers.
-            "use_dictionary": [c.name for c in self.table.columns if c.type is not ColumnType.DOUBLE][1:],
-            "write_page_index": True,
-        }
-        with pq.ParquetWriter(sink, schema, **options) as writer:
-            # An empty table has one group without rows, which the writer needs to have a schema.
-            for first in range(0, max(1, rows.num_rows), _ROW_GROUP_ROWS):
-                group = rows.take(order.slice(first, _ROW_GROUP_ROWS))
-                for batch in group.to_batches():
-                    digest.add(batch)
-                check_nulls(self.table, [digest.file_rows])
-                writer.write_table(group)
+        return write_file(rows, self._order(rows), self.described, self.first_rows[part], self.output, path)
 
     def _order(self, rows: pa.Table) -> pa.Array:
         """Positions of the rows by key; SparkrankError if two rows have one."""

@@ -13,7 +13,7 @@ import pytest
 
 from sparkrank.errors import SparkrankError
 from sparkrank.places import resolve
-from sparkrank.publish import by_tasks, parts
+from sparkrank.publish import parts, table_file
 from sparkrank.publish.attempts import RunFolder, new_attempt_id
 from sparkrank.publish.by_tasks import publish_parts
 from sparkrank.publish.digest import digest_ordered_rows
@@ -90,7 +90,7 @@ def run(tmp_path) -> Iterator[RunFolder]:
 def many_parts(monkeypatch) -> None:
     """Parts of at least ten rows, row groups of at most seven."""
     monkeypatch.setattr(parts, "_LEAST_ROWS", 10)
-    monkeypatch.setattr(by_tasks, "_ROW_GROUP_ROWS", 7)
+    monkeypatch.setattr(table_file, "_ROW_GROUP_ROWS", 7)
 
 
 def publish_here(spark, given: TableParts, run: RunFolder, table: TableSpec = TABLE) -> TableEntry:
