@@ -1,0 +1,1 @@
+"""Connected components of flat edge lists."""
