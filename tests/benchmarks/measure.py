@@ -153,6 +153,8 @@ class Finished:
     memory: Facts
     answer: Facts
     """What it printed as JSON on its last line; empty where it printed nothing."""
+    said: str
+    """Its standard error."""
 
 
 def run_process(command: list[str], environment: dict[str, str] | None = None) -> Finished:
@@ -171,8 +173,10 @@ def run_process(command: list[str], environment: dict[str, str] | None = None) -
     seconds = time.monotonic() - started
     if process.returncode:
         raise RuntimeError(f"{shlex.join(command)}: status {process.returncode}\n{errors[-4000:]}")
-    answer = json.loads(output.splitlines()[-1]) if output.strip() else {}
-    return Finished(seconds=seconds, memory=memory.as_facts(), answer=answer)
+    last = output.splitlines()[-1] if output.strip() else ""
+    # People get other last lines.
+    answer = json.loads(last) if last.startswith("{") else {}
+    return Finished(seconds=seconds, memory=memory.as_facts(), answer=answer, said=errors)
 
 
 def run_peer(arguments: list[str]) -> Finished:

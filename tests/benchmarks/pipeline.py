@@ -7,6 +7,7 @@ engine says its error is, what it is, and how far 20 iterations come.
 """
 
 import json
+import re
 import shutil
 import statistics
 import sys
@@ -25,6 +26,14 @@ from measure import PROJECT, Facts, median
 from peers import WholeGraph, default_heap, read_edges, read_ranks
 from spark_runs import spark_settings, stages_of, traffic_by_step
 
+# Lines of progress that end with a stage's seconds.
+_STAGES = {
+    "scan": r"build scan-\d+:",
+    "rest of the build": r"build (?:hosts-\d+|tiles|order|graph):",
+    "steps": r"step \d+:",
+    "tables": r"(?:rows in \d+ files written|rows written),",
+    "evidence": r"sources listed,",
+}
 # Far below the bound that is checked against it.
 _REFERENCE_TOLERANCE = 1e-11
 
@@ -33,13 +42,15 @@ def pipeline(files: CrawlFiles, scratch: Path, asked: Any) -> Facts:
     """One run of the pipeline as a process, in a fresh output and work folder."""
     shutil.rmtree(scratch, ignore_errors=True)
     words = [word for value in overrides(files, scratch) for word in ("--set", value)]
-    command = [sys.executable, str(PROJECT / "jobs" / "run_pipeline.py"), *words, "--quiet"]
+    command = [sys.executable, str(PROJECT / "jobs" / "run_pipeline.py"), *words]
     events = scratch / "events"
     ran = measure.run_process(command, spark_settings(events, asked.master, asked.heap))
     manifest = json.loads((scratch / "tables" / "runs" / "benchmark.json").read_text())
     work = sum(file.stat().st_size for file in (scratch / "work").rglob("*") if file.is_file())
     return {
         "seconds": ran.seconds,
+        "session_seconds": float(_seconds_of(ran.said, r"session opened")[0]),
+        "stage_seconds": {name: sum(_seconds_of(ran.said, pattern)) for name, pattern in _STAGES.items()},
         "columns": manifest["columns"],
         "graph": manifest["graph"],
         "candidates": manifest["tables"]["spam_candidates"]["rows"],
@@ -47,6 +58,11 @@ def pipeline(files: CrawlFiles, scratch: Path, asked: Any) -> Facts:
         "spark_stages": stages_of(events),
         **ran.memory,
     }
+
+
+def _seconds_of(said: str, pattern: str) -> list[float]:
+    """The seconds at the ends of the program's lines of progress that match."""
+    return [float(found) for found in re.findall(rf"{pattern}.*?([0-9.]+) s\b", said)]
 
 
 def graphx(files: CrawlFiles, ranks: Path, asked: Any) -> Facts:
