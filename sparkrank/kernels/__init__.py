@@ -11,7 +11,7 @@ Read in the order of the data flow:
 - ``accumulate``: the multiplication, k columns at once
 - ``extrapolate``: a better state from the last few steps
 - ``mass``: absolute and relative spam mass, and its range over the core's slices
-- ``farms``: closed forms of farm arithmetic
+- ``farms``: closed forms of farm arithmetic; ``floor``: the smallest farms that thresholds list
 - ``sources``: what the direct sources of a candidate look like
 - ``shape``: the shape of a candidate's support, and the order in which to look at candidates
 - ``reasons``: what put a candidate there, and what else it may be
