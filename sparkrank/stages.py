@@ -180,6 +180,7 @@ def rank(context: JobContext, inputs: RunInputs, scored: StepRecord) -> StepReco
         context.config.candidates,
         context.config.evidence,
         damping=context.config.solve.damping,
+        good_share=context.config.mass.good_share,
     )
     rows = context.spark.read.parquet(*(place.uri for place in scores))
     measures = found.measures_frame(context.spark)

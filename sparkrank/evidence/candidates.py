@@ -6,27 +6,10 @@ from typing import TYPE_CHECKING
 
 from sparkrank.config import Candidates
 from sparkrank.evidence.cautions import CoreStrength, bare_suffixes, caution_column
+from sparkrank.evidence.reasons import reason_column
 
 if TYPE_CHECKING:
-    from pyspark.sql import Column, DataFrame
-
-# Being out of the core's reach is no evidence; such hosts come after reached ones of the same mass.
-_UNREACHED_WEIGHT = 0.5
-
-
-def priority() -> Column:
-    """What the order goes by: relative mass times the decimal logarithm of 1 + absolute mass, halved
-    where the core does not reach; relative mass alone where the absolute one is not positive.
-
-    Absolute mass says how much there is to gain, by its order of magnitude; relative mass how much of
-    the host's score the core leaves unexplained.
-    """
-    from pyspark.sql import functions as sf
-
-    size = sf.log10(sf.lit(1.0) + sf.greatest(sf.col("absolute_mass"), sf.lit(0.0)))
-    reach = sf.when(sf.col("core_reached"), sf.lit(1.0)).otherwise(sf.lit(_UNREACHED_WEIGHT))
-    by_mass = sf.col("relative_mass") * size * reach
-    return sf.when(sf.col("absolute_mass") > 0, by_mass).otherwise(sf.col("relative_mass"))
+    from pyspark.sql import DataFrame
 
 
 def spam_candidates(
@@ -45,7 +28,8 @@ def spam_candidates(
     chosen = chosen.join(sf.broadcast(bare), sf.col("suffix").eqNullSafe(sf.col("bare_suffix")), "left")
     chosen = chosen.withColumn("is_bare_suffix", sf.coalesce(sf.col("is_bare"), sf.lit(False)))
     chosen = chosen.withColumn("cautions", caution_column(strength, thresholds.min_relative_mass))
-    chosen = chosen.withColumn("priority", priority()).drop("bare_suffix", "is_bare", "is_bare_suffix")
+    chosen = chosen.withColumn("reasons", reason_column())
+    chosen = chosen.drop("bare_suffix", "is_bare", "is_bare_suffix")
     return _ranked(chosen)
 
 

@@ -49,6 +49,10 @@ class EvidenceFolder:
         """The stripe's sources of the targets, with what is known of them; sorted by target."""
         return self.place.child(kind, f"{stripe:03d}-{chunk:04d}.arrays")
 
+    def handed_on(self, stripe: int) -> Place:
+        """What the stripe's targets hand on to other targets."""
+        return self.place.child("handed_on", f"{stripe:03d}.arrays")
+
     def leading(self, kind: str, group: int, stripe: int) -> Place:
         """The stripe's leading sources of a group's targets, as Parquet."""
         return self.place.child("leading", kind, f"{group:05d}-{stripe:03d}.parquet")

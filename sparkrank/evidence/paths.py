@@ -52,6 +52,10 @@ class Gathering:
     target_counts: list[int]
     least_share_a_link: float
     max_steps: int
+    all_trust: float
+    """Good share times the number of hosts: what the whole core starts from, scaled."""
+    core_weight: float
+    """Weight of all core members of the graph."""
 
     @cached_property
     def neighbours(self) -> Neighbours:
@@ -73,6 +77,16 @@ class Gathering:
             host=np.concatenate([one["host"] + firsts[s] for s, one in enumerate(found)]),
             **{name: np.concatenate([one[name] for one in found]) for name in Targets._fields[1:]},
         )
+
+    def behind(self, stripe: int, residuals: Residuals) -> NDArray[np.float64]:
+        """What comes through each host of the stripe but not from it: (p_w - 1)·r."""
+        return (self.neighbours.values(stripe)["scaled_pagerank"][residuals.host] - 1.0) * residuals.value
+
+    def are_followed(self, stripe: int, residuals: Residuals) -> NDArray[np.bool_]:
+        """Which residuals of a step between the first and the last are followed."""
+        in_degree = self.neighbours.values(stripe)["in_degree"][residuals.host].astype(np.int64)
+        score = self.targets.score[residuals.target]
+        return worth_following(self.behind(stripe, residuals), score, in_degree, self.least_share_a_link)
 
     def flow_per_score(self, stripe: int, hosts: NDArray[np.int64]) -> NDArray[np.float64]:
         """c / out-weight of hosts of a stripe that have out-links."""
@@ -144,16 +158,14 @@ class FollowStep:
     def _followed(self, stripe: int, residuals: Residuals, lost: NDArray[np.float64]) -> Iterator[Residuals]:
         """What is worth following, in parts of bounded size; the rest is added to ``lost``."""
         gathering = self.gathering
-        values = gathering.neighbours.values(stripe)
-        behind = (values["scaled_pagerank"][residuals.host] - 1.0) * residuals.value
-        in_degree = values["in_degree"][residuals.host].astype(np.int64)
+        behind = gathering.behind(stripe, residuals)
+        in_degree = gathering.neighbours.values(stripe)["in_degree"][residuals.host].astype(np.int64)
         if self.step == 0:
             chosen = in_degree > 0
         elif self.step >= gathering.max_steps:
             chosen = np.zeros(len(behind), dtype=np.bool_)
         else:
-            score = gathering.targets.score[residuals.target]
-            chosen = worth_following(behind, score, in_degree, gathering.least_share_a_link)
+            chosen = gathering.are_followed(stripe, residuals)
         # Rounding leaves hosts without in-links next to nothing behind them.
         left = np.where(chosen | (in_degree == 0), 0.0, behind)
         lost += np.bincount(residuals.target, left, minlength=len(lost))

@@ -12,9 +12,12 @@ from numpy.typing import NDArray
 
 from sparkrank.arrays import read_arrays
 from sparkrank.evidence.paths import Gathering
+from sparkrank.evidence.shapes import GroupShapes, group_shapes, source_keys
 from sparkrank.evidence.sources import DIRECT, KINDS, ORIGIN, Sources, by_contribution
+from sparkrank.kernels.sources import KIND_NAMES
 from sparkrank.tables import CANDIDATE_SUPPORT, arrow_schema
 from sparkrank.tables.evidence import SOURCE_COLUMNS
+from sparkrank.tables.measures import MEASURES
 
 # The sources that carry this share of a score are listed: what is left changes no reviewer's mind.
 LISTED_SHARE = 0.95
@@ -36,19 +39,23 @@ class GroupRows:
         low, high = self.groups[group]
         score = gathering.targets.score[low:high]
         hosts = self._hosts(low, high)
+        shapes = group_shapes(gathering, self.chunks, low, high)
         tables, unexplained = [], {}
         for kind in KINDS:
-            rows, unexplained[kind] = self._support(kind, group, hosts, score)
+            rows, unexplained[kind] = self._support(kind, group, hosts, score, shapes)
             tables.append(rows)
         support = pa.concat_tables(tables)
         _write(gathering.folder.support(group), support)
         measures = {
             "host": hosts,
+            # NaN says that there is no such number.
+            **{name: pa.array(values, from_pandas=True) for name, values in shapes.measures.items()},
             "direct_unexplained_share": unexplained[DIRECT],
             "origin_unexplained_share": unexplained[ORIGIN],
             "origin_error_share": self._lost(low, high) / score,
         }
-        _write(gathering.folder.measures(group), pa.table(measures))
+        ordered = {name: measures[name] for name in ("host", "priority", *MEASURES)}
+        _write(gathering.folder.measures(group), pa.table(ordered))
         return int(support.num_rows)
 
     def _hosts(self, low: int, high: int) -> pa.Array:
@@ -72,7 +79,7 @@ class GroupRows:
         return lost
 
     def _support(
-        self, kind: str, group: int, hosts: pa.Array, score: NDArray[np.float64]
+        self, kind: str, group: int, hosts: pa.Array, score: NDArray[np.float64], shapes: GroupShapes
     ) -> tuple[pa.Table, NDArray[np.float64]]:
         """Rows of a kind, and by target the share of its score that none of them carries."""
         low, _ = self.groups[group]
@@ -96,6 +103,9 @@ class GroupRows:
             "unexplained": unexplained[target[kept]],
         }
         rows = {name: values[kept] for name, values in rows.items()}
+        if kind == DIRECT:
+            kinds = shapes.kind_of(source_keys(numbers["target"], rows["source"]))
+            numbers["looks_like"] = np.array(KIND_NAMES, dtype=object)[kinds]
         domains = self.gathering.targets.domain[low : low + len(score)]
         return self._table(kind, rows, hosts, numbers, domains), unexplained
 
@@ -129,6 +139,7 @@ class GroupRows:
             "share": pa.array(numbers["share"]),
             "unexplained_share": pa.array(numbers["unexplained"]),
             "distance": pa.array(rows["distance"], pa.int32()),
+            "looks_like": pa.array(numbers["looks_like"]) if kind == DIRECT else pa.nulls(n, pa.string()),
             "link_returned": pa.array(rows["returned"]) if kind == DIRECT else pa.nulls(n, pa.bool_()),
             "same_domain": pa.array(rows["domain"] == domains[target]),
             "source_is_candidate": pa.array(rows["is_target"]),

@@ -20,6 +20,7 @@ from sparkrank.evidence.paths import CHUNK_LINKS, Gathering, target_ranges
 from sparkrank.evidence.values import host_names
 from sparkrank.kernels.backward import Residuals, add_up, pair_keys
 from sparkrank.kernels.lookup import find_ids
+from sparkrank.kernels.sources import hands_on
 
 DIRECT, ORIGIN = "direct", "origin"
 KINDS = (DIRECT, ORIGIN)
@@ -58,17 +59,43 @@ class DirectSources:
     def __call__(self, stripe: int) -> int:
         gathering = self.gathering
         leading = _Leading(gathering, stripe, DIRECT, self.groups, self.listed)
+        targets_linked = self._targets_linked(stripe)
+        handed_on = np.zeros(gathering.target_counts[stripe])
         for chunk in range(self.kept_chunks[stripe]):
             links = read_residuals(gathering, 1, stripe, chunk)
             sources = _described(gathering, stripe, links)
-            sources["transition"] = links.value / gathering.damping
+            sources["followed"] = gathering.are_followed(stripe, links)
+            sources["targets_linked"] = targets_linked[links.host]
+            sources["transition"] = _transition(gathering, stripe, links)
             sources["contribution"] = links.value * sources["scaled_pagerank"]
             sources["returned"] = _are_returned(gathering, stripe, links)
             sources["distance"] = np.ones(len(links.target), dtype=np.uint8)
             write_arrays(gathering.folder.sources(DIRECT, stripe, chunk), sources)
             leading.add(sources)
+            self._hand_on(stripe, links, sources, handed_on)
         leading.write()
+        write_arrays(gathering.folder.handed_on(stripe), {"share": handed_on})
         return self.kept_chunks[stripe]
+
+    def _targets_linked(self, stripe: int) -> NDArray[np.int64]:
+        """How many targets each of the stripe's hosts links to: shape (hosts,)."""
+        counts = np.zeros(len(self.gathering.neighbours.values(stripe)["host_at"]), dtype=np.int64)
+        for chunk in range(self.kept_chunks[stripe]):
+            hosts = read_residuals(self.gathering, 1, stripe, chunk).host
+            counts += np.bincount(hosts, minlength=len(counts))
+        return counts
+
+    def _hand_on(
+        self, stripe: int, links: Residuals, sources: Sources, handed_on: NDArray[np.float64]
+    ) -> None:
+        """Adds what the stripe's own targets hand on to other ones; ``handed_on`` changes in place."""
+        gathering = self.gathering
+        at = np.flatnonzero(sources["is_target"])
+        own = np.searchsorted(gathering.targets.host, sources["source"][at]) - gathering.first_target(stripe)
+        to_score = gathering.targets.score[links.target[at]]
+        transition, score = sources["transition"][at], sources["scaled_pagerank"][at]
+        handed = hands_on(transition, score, to_score, gathering.damping)
+        handed_on += np.bincount(own, handed, minlength=len(handed_on))
 
 
 @dataclass(frozen=True)
@@ -147,6 +174,13 @@ def _described(gathering: Gathering, stripe: int, pairs: Residuals) -> Sources:
         "source": source,
         **{name: _wide(values[name][pairs.host]) for name in OF_THE_SOURCE},
     }
+
+
+def _transition(gathering: Gathering, stripe: int, links: Residuals) -> NDArray[np.float64]:
+    """T[u, x] of direct links: their weight, a whole number, by the source's out-weight, without rounding."""
+    weight = np.rint(links.value / gathering.flow_per_score(stripe, links.host))
+    share: NDArray[np.float64] = weight / gathering.neighbours.values(stripe)["out_weight"][links.host]
+    return share
 
 
 def _wide(values: NDArray[Any]) -> NDArray[Any]:

@@ -32,7 +32,7 @@ from sparkrank.names.lists import HostList
 from sparkrank.names.octets import octets_of
 from sparkrank.places import Place
 from sparkrank.tables import CANDIDATE_SUPPORT, SPAM_CANDIDATES, spark_schema
-from sparkrank.tables.evidence import MEASURES
+from sparkrank.tables.measures import MEASURES
 from sparkrank.tasks import TaskRunner
 
 if TYPE_CHECKING:
@@ -89,10 +89,10 @@ class SupportFiles:
 
 
 def measures_schema() -> StructType:
-    """The schema of the measures."""
+    """The schema of the measures, and of the priority that they give."""
     from pyspark.sql.types import StructType
 
-    names = ("host", *MEASURES)
+    names = ("host", "priority", *MEASURES)
     return StructType([field for field in spark_schema(SPAM_CANDIDATES).fields if field.name in names])
 
 
@@ -112,6 +112,7 @@ def gather_support(
     settings: Evidence,
     *,
     damping: float,
+    good_share: float,
 ) -> SupportFiles:
     """Gathers the support of the wanted hosts below ``place``; ``scores`` are the files of host_scores.
 
@@ -142,6 +143,8 @@ def gather_support(
             target_counts=counts,
             least_share_a_link=share,
             max_steps=settings.max_steps,
+            all_trust=good_share * graph.n_hosts,
+            core_weight=sum(one.core_weight for one in laid),
         )
         kept, links = _follow(spark, gathering, stripes)
         groups = target_ranges(gathering.targets.in_degree + _GROUP_LINKS // _GROUP_TARGETS, _GROUP_LINKS)

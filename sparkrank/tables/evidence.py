@@ -3,32 +3,8 @@
 import dataclasses
 
 from sparkrank.tables.columns import DEGREE_COLUMNS, HOST, LEAD, NAME_COLUMNS, SCORE_COLUMNS
+from sparkrank.tables.measures import SUPPORT_MEASURES
 from sparkrank.tables.spec import ColumnSpec, ColumnType, TableSpec
-
-_MEASURE_COLUMNS = (
-    ColumnSpec(
-        name="direct_unexplained_share",
-        type=ColumnType.DOUBLE,
-        unit="share of the host's own PageRank",
-        meaning="What in-links carry less what the direct sources in `candidate_support` do.",
-    ),
-    ColumnSpec(
-        name="origin_unexplained_share",
-        type=ColumnType.DOUBLE,
-        unit="share of the host's own PageRank",
-        meaning="What the origins in `candidate_support` leave.",
-    ),
-    ColumnSpec(
-        name="origin_error_share",
-        type=ColumnType.DOUBLE,
-        unit="share of the host's own PageRank",
-        meaning="What lies behind hosts that were not followed back: no origin gives more than its "
-        "contribution and this.",
-    ),
-)
-
-MEASURES = tuple(column.name for column in _MEASURE_COLUMNS)
-"""The columns of a candidate that its support adds up to."""
 
 SPAM_CANDIDATES = TableSpec(
     name="spam_candidates",
@@ -55,7 +31,14 @@ SPAM_CANDIDATES = TableSpec(
         *NAME_COLUMNS,
         *DEGREE_COLUMNS,
         *SCORE_COLUMNS,
-        *_MEASURE_COLUMNS,
+        *SUPPORT_MEASURES,
+        ColumnSpec(
+            name="reasons",
+            type=ColumnType.STRINGS,
+            unit="text",
+            meaning="Up to three facts of its links that put the row where it is, in words.",
+            caution="What links look like; they do not say whose they are.",
+        ),
         ColumnSpec(
             name="cautions",
             type=ColumnType.STRINGS,
@@ -144,6 +127,15 @@ CANDIDATE_SUPPORT = TableSpec(
             type=ColumnType.INT,
             unit="links",
             meaning="Links on the shortest path followed from the source to the candidate; 0 is itself.",
+        ),
+        ColumnSpec(
+            name="looks_like",
+            type=ColumnType.STRING,
+            unit="text",
+            nullable=True,
+            meaning="What a direct source looks like by its links: close, open_page or independent, as the "
+            "README explains. Null for the kind origin.",
+            caution="A look, from links alone: it names no owner and no intent.",
         ),
         ColumnSpec(
             name="link_returned",

@@ -1,6 +1,7 @@
 """README.md says what the code says, and its examples run."""
 
 import importlib.util
+import math
 import re
 import tomllib
 from pathlib import Path
@@ -10,7 +11,7 @@ import pytest
 
 from sparkrank import __version__
 from sparkrank.config.sections import SECTIONS, settings_of
-from sparkrank.evidence import candidates
+from sparkrank.kernels import shape
 from sparkrank.names.canonical import REASONS
 from sparkrank.tables import TABLES
 from tests.jobs.desk import JOBS, ROOT, RUN
@@ -57,13 +58,23 @@ def test_scores_are_never_met_without_their_cautions() -> None:
         assert README.count(words) >= 2
 
 
-def test_the_formula_of_the_order_is_the_one_in_use(spark) -> None:
-    rows = [(0.9, 99.0, True), (0.9, 99.0, False), (-0.5, -3.0, True), (0.0, 0.0, False)]
-    frame = spark.createDataFrame(rows, "relative_mass double, absolute_mass double, core_reached boolean")
-    found = [row[0] for row in frame.select(candidates.priority()).collect()]
-    # By the formula as the README has it.
-    assert "priority = relative_mass · log10(1 + absolute_mass) · r     r = 1 where core_reached" in README
-    assert found == pytest.approx([0.9 * 2, 0.9 * 2 / 2, -0.5, 0.0], rel=1e-12)
+def test_the_formula_of_the_order_is_the_one_in_use(finished) -> None:
+    """By the columns of the published rows, and in words beside the code."""
+    formula = "priority = s · (V·H)^(1/2) · (1 - d/5) · (1 - 4h/5) · r · log10(1 + M/(1/2 + I))"
+    assert formula in README
+    assert formula in (shape.__doc__ or "")
+    rows = finished.table("spam_candidates")
+    assert {row["core_reached"] for row in rows} == {True, False}
+    for row in rows:
+        alike = math.sqrt(row["source_variety"] * row["alike_sources"])
+        amount = math.log10(1 + row["bound_amount"] / (0.5 + row["independent_breadth"]))
+        rest = (
+            (1 - row["own_domain_share"] / 5)
+            * (1 - 4 * row["handed_on_share"] / 5)
+            * (1 if row["core_reached"] else 0.85)
+        )
+        assert row["priority"] == pytest.approx(row["bound_share"] * alike * rest * amount, rel=1e-12)
+        assert row["priority"] > 0
 
 
 def test_the_example_for_pyarrow_runs(finished, capsys) -> None:

@@ -60,6 +60,7 @@ def gather(
             wanted,
             evidence(**settings),
             damping=scored.solved.solution.solve.damping,
+            good_share=scored.solved.good_share,
         )
 
 

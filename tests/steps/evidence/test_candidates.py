@@ -49,6 +49,7 @@ def score(host: str, **values: Any) -> dict[str, Any]:
         "is_core": False,
         "core_reached": True,
         "core_distance": 2,
+        "priority": 1.0,
     }
     return row | values
 
@@ -75,8 +76,10 @@ def frame(spark, rows: list[dict[str, Any]]):
 
 def measures(spark, rows: list[dict[str, Any]]):
     """Measures of every host, told apart by nothing."""
-    names = measures_schema().names[1:]
-    return spark.createDataFrame([(row["host"], *[0.25] * len(names)) for row in rows], measures_schema())
+    schema = measures_schema()
+    values = {"double": 0.25, "bigint": 4}
+    rest = [values[field.dataType.simpleString()] for field in schema.fields[2:]]
+    return spark.createDataFrame([(row["host"], row["priority"], *rest) for row in rows], schema)
 
 
 @pytest.fixture
@@ -138,38 +141,27 @@ def test_scores_are_taken_over_unchanged(at_defaults, host) -> None:
 
 
 def test_a_threshold_far_below_zero_lists_every_host_of_enough_pagerank_by_priority(spark) -> None:
-    """relative mass · log10(1 + absolute mass), half of it unreached; relative mass where none is gained."""
     rows = [
-        score("small.test", relative_mass=0.9, absolute_mass=9.0),
-        score("large.test", relative_mass=0.9, absolute_mass=999.0),
-        score("unknown.test", relative_mass=1.0, absolute_mass=999.0, core_reached=False),
-        score("none.test", relative_mass=0.0, absolute_mass=0.0),
-        score("negative-unknown.test", relative_mass=-3.0, absolute_mass=-300.0, core_reached=False),
-        score("negative.test", relative_mass=-2.0, absolute_mass=-200.0),
-        score("far-below.test", relative_mass=-999_999.0, absolute_mass=-1e8, scaled_pagerank=10.0),
-        score("below-rho.test", scaled_pagerank=9.9),
-        score("member.test", is_core=True),
+        score("small.test", priority=0.9),
+        score("large.test", priority=2.7),
+        score("unknown.test", relative_mass=1.0, priority=1.5, core_reached=False),
+        score("negative.test", relative_mass=-2.0, absolute_mass=-200.0, priority=1e-9),
+        score("far-below.test", relative_mass=-999_999.0, scaled_pagerank=10.0, priority=0.0),
+        score("below-rho.test", scaled_pagerank=9.9, priority=9.0),
+        score("member.test", is_core=True, priority=9.0),
     ]
     found = candidates(spark, rows, Candidates(min_scaled_pagerank=10.0, min_relative_mass=-1e6))
-    expected = {
-        "large.test": 0.9 * 3,
-        "unknown.test": 1.0 * 3 / 2,
-        "small.test": 0.9,
-        "none.test": 0.0,
-        "negative.test": -2.0,
-        "negative-unknown.test": -3.0,
-        "far-below.test": -999_999.0,
-    }
-    assert [row["host"] for row in found] == list(expected)
-    assert [row["priority"] for row in found] == pytest.approx(list(expected.values()), rel=1e-14)
-    assert [row["rank"] for row in found] == [1, 2, 3, 4, 5, 6, 7]
+    order = ["large.test", "unknown.test", "small.test", "negative.test", "far-below.test"]
+    assert [row["host"] for row in found] == order
+    assert [row["priority"] for row in found] == [2.7, 1.5, 0.9, 1e-9, 0.0]
+    assert [row["rank"] for row in found] == [1, 2, 3, 4, 5]
 
 
 def test_equal_priorities_order_by_host_over_all_partitions(spark, many_partitions) -> None:
     rows = [
-        score(f"{name}{i:02d}.test", absolute_mass=mass)
+        score(f"{name}{i:02d}.test", priority=priority)
         for i in range(30)
-        for name, mass in (("b", 9.0), ("a", 99.0))
+        for name, priority in (("b", 1.0), ("a", 2.0))
     ]
     found = candidates(spark, rows[::-1])
     assert [row["host"] for row in found] == [
