@@ -6,10 +6,12 @@ from typing import TYPE_CHECKING
 
 from sparkrank.config import Candidates
 from sparkrank.evidence.cautions import CoreStrength, bare_suffixes, caution_column
-from sparkrank.evidence.reasons import reason_column
 
 if TYPE_CHECKING:
     from pyspark.sql import DataFrame
+
+OVER_THRESHOLDS = "it is over both thresholds; nothing in its support stands out"
+"""The reason of a candidate that has no other."""
 
 
 def spam_candidates(
@@ -28,8 +30,10 @@ def spam_candidates(
     chosen = chosen.join(sf.broadcast(bare), sf.col("suffix").eqNullSafe(sf.col("bare_suffix")), "left")
     chosen = chosen.withColumn("is_bare_suffix", sf.coalesce(sf.col("is_bare"), sf.lit(False)))
     chosen = chosen.withColumn("cautions", caution_column(strength, thresholds.min_relative_mass))
-    chosen = chosen.withColumn("reasons", reason_column())
-    chosen = chosen.drop("bare_suffix", "is_bare", "is_bare_suffix")
+    none = sf.size("reasons") == 0
+    reasons = sf.when(none, sf.array(sf.lit(OVER_THRESHOLDS))).otherwise(sf.col("reasons"))
+    chosen = chosen.withColumn("reasons", reasons)
+    chosen = chosen.drop("look_alikes", "bare_suffix", "is_bare", "is_bare_suffix")
     return _ranked(chosen)
 
 

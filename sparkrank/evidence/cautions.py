@@ -19,11 +19,6 @@ BARE_SUFFIX = "the good core has next to no members under this public suffix"
 THIN_CORE = "the good core is thin: one abused link from a member could hide a farm of a thousand hosts"
 FEW_SLICES = "the good core has fewer than two slices: how stable the score is cannot be told"
 
-OWN_DOMAIN = "most support comes from its own registrable domain: may be a platform, or one owner's hosts"
-SMALL_SITES = "sources that link here alone: may be the small sites of honest users, which look the same"
-CREDIT = "sources of many domains that link elsewhere, too: may be the credit line of a maker of sites"
-FRIENDS = "links go both ways or around among few hosts: may be friends or a hobby ring"
-DIRECTORY = "it links to many hosts, its sources among them: may be a portal or a directory"
 ONE_MEMBER = "nearly all of its trust comes from one core member"
 
 # A core member with ten out-links is an ordinary page; a farm of a thousand is a large one.
@@ -31,12 +26,8 @@ _LINK_OUT_LINKS = 10
 _FARM_BOOSTERS = 1000.0
 # A suffix with less than a tenth of the members that an even spread would give it is left out.
 _EVEN_SHARE = 0.1
-# As in the reasons: half is most, a third going around is no chance.
-_MOST = 0.5
-_CIRCLING = 0.3
+# All but a tenth: then the others hardly count.
 _NEARLY_ALL = 0.9
-# Friends and hobby rings have some dozens of members, not more; a portal links to as many and more.
-_MANY = 50
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -86,27 +77,9 @@ def bare_suffixes(scores: DataFrame) -> DataFrame:
     return by_suffix.crossJoin(sf.broadcast(total)).where(bare).select(sf.col("suffix").alias("bare_suffix"))
 
 
-def _look_alikes() -> list[Column]:
-    """What honest thing a candidate's support may be: links alone often cannot tell."""
-    from pyspark.sql import functions as sf
-
-    def over(name: str, least: float) -> Column:
-        return sf.col(name) >= least
-
-    both_ways = over("returned_share", _MOST) | over("circling_share", _CIRCLING)
-    spread = over("in_degree", _MANY) & (sf.col("domain_concentration") < 1 / _MANY)
-    return [
-        sf.when(over("own_domain_share", _MOST), OWN_DOMAIN),
-        sf.when(over("exclusive_share", _MOST) & ~both_ways, SMALL_SITES),
-        sf.when(spread & ~over("exclusive_share", _MOST) & ~both_ways, CREDIT),
-        sf.when(both_ways & (sf.col("in_degree") < _MANY), FRIENDS),
-        sf.when(over("returned_share", _CIRCLING) & over("out_degree", _MANY), DIRECTORY),
-        sf.when(over("largest_core_member_trust_share", _NEARLY_ALL), ONE_MEMBER),
-    ]
-
-
 def caution_column(strength: CoreStrength, min_relative_mass: float) -> Column:
-    """Cautions of a candidate; needs its scores, its measures and the boolean ``is_bare_suffix``."""
+    """Cautions of a candidate; needs its scores, its measures with what honest thing its shape may be
+    (``look_alikes``), and the boolean ``is_bare_suffix``."""
     from pyspark.sql import functions as sf
 
     # One slice decides where the whole core says candidate and some core without a slice does not.
@@ -115,7 +88,8 @@ def caution_column(strength: CoreStrength, min_relative_mass: float) -> Column:
         sf.when(~sf.col("core_reached"), NOT_REACHED),
         sf.when(one_slice, ONE_SLICE),
         sf.when(sf.col("is_bare_suffix"), BARE_SUFFIX),
-        *_look_alikes(),
+        sf.when(sf.col("largest_core_member_trust_share") >= _NEARLY_ALL, ONE_MEMBER),
         *[sf.lit(text) for text in strength.cautions],
     ]
-    return sf.filter(sf.array(*found), lambda text: text.isNotNull())
+    own = sf.filter(sf.array(*found), lambda text: text.isNotNull())
+    return sf.concat(own, sf.col("look_alikes"))

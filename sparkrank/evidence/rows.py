@@ -14,6 +14,7 @@ from sparkrank.arrays import read_arrays
 from sparkrank.evidence.paths import Gathering
 from sparkrank.evidence.shapes import GroupShapes, group_shapes, source_keys
 from sparkrank.evidence.sources import DIRECT, KINDS, ORIGIN, Sources, by_contribution
+from sparkrank.kernels.reasons import CAUTIONS, REASONS
 from sparkrank.kernels.sources import KIND_NAMES
 from sparkrank.tables import CANDIDATE_SUPPORT, arrow_schema
 from sparkrank.tables.evidence import SOURCE_COLUMNS
@@ -55,6 +56,8 @@ class GroupRows:
             "origin_error_share": self._lost(low, high) / score,
         }
         ordered = {name: measures[name] for name in ("host", "priority", *MEASURES)}
+        ordered["reasons"] = _texts(shapes.marks.reasons, REASONS)
+        ordered["look_alikes"] = _texts(shapes.marks.cautions, CAUTIONS)
         _write(gathering.folder.measures(group), pa.table(ordered))
         return int(support.num_rows)
 
@@ -153,6 +156,14 @@ class GroupRows:
                 values = pa.array(rows[name])
             columns[f"source_{name}"] = values.cast(schema.field(f"source_{name}").type)
         return pa.table(columns, schema=schema)
+
+
+def _texts(marks: NDArray[np.bool_], texts: tuple[str, ...]) -> pa.Array:
+    """The texts that hold for each row, in their order."""
+    row, text = np.nonzero(marks)
+    offsets = np.searchsorted(row, np.arange(len(marks) + 1))
+    chosen = pa.array(texts, pa.string()).take(pa.array(text))
+    return pa.ListArray.from_arrays(pa.array(offsets, pa.int32()), chosen)
 
 
 def _sum_before(values: NDArray[np.float64], place: NDArray[np.int64]) -> NDArray[np.float64]:

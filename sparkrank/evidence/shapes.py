@@ -11,6 +11,7 @@ from numpy.typing import NDArray
 from sparkrank.arrays import read_arrays
 from sparkrank.evidence.paths import Gathering
 from sparkrank.evidence.sources import DIRECT, ORIGIN, Sources
+from sparkrank.kernels.reasons import Marks, marks
 from sparkrank.kernels.shape import priority, shape_columns
 from sparkrank.kernels.sources import (
     CandidateArrays,
@@ -47,6 +48,7 @@ class GroupShapes:
     """Sorted keys of all direct links: see ``source_keys``."""
     kinds: NDArray[np.int8]
     """What each of these looks like, by number."""
+    marks: Marks
 
     def kind_of(self, keys: NDArray[np.int64]) -> NDArray[np.int8]:
         """Kinds of some of the direct links."""
@@ -110,15 +112,17 @@ def group_shapes(
     links = _links(direct, n, closeness[np.searchsorted(origin_keys, keys)] if direct else np.zeros(0))
     shape = shape_columns(links, arrays, damping)
     kinds = source_kinds(links, arrays, outside_support(links, arrays, damping))
+    sums = kind_sums(links, arrays, kinds, damping)
     measures: dict[str, NDArray[Any]] = {
         "priority": priority(shape, arrays),
         "handed_on_share": arrays.handed_on,
         **shape._asdict(),
-        **kind_sums(links, arrays, kinds, damping)._asdict(),
+        **sums._asdict(),
         **_origin_measures(origins, targets, n),
         "largest_core_member_trust_share": _largest_member(gathering, origins, targets),
     }
-    return GroupShapes(measures=measures, direct_keys=keys, kinds=kinds)
+    found = marks(shape, arrays, sums)
+    return GroupShapes(measures=measures, direct_keys=keys, kinds=kinds, marks=found)
 
 
 def _own_values(gathering: Gathering, low: int, high: int) -> dict[str, NDArray[Any]]:

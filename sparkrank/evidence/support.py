@@ -89,11 +89,13 @@ class SupportFiles:
 
 
 def measures_schema() -> StructType:
-    """The schema of the measures, and of the priority that they give."""
+    """The schema of the measures, of the priority and the reasons that they give, and of what honest
+    thing each candidate may be."""
     from pyspark.sql.types import StructType
 
-    names = ("host", "priority", *MEASURES)
-    return StructType([field for field in spark_schema(SPAM_CANDIDATES).fields if field.name in names])
+    fields = {field.name: field for field in spark_schema(SPAM_CANDIDATES).fields}
+    found = StructType([fields[name] for name in ("host", "priority", *MEASURES, "reasons")])
+    return found.add("look_alikes", fields["cautions"].dataType, nullable=False)
 
 
 def _frame(spark: SparkSession, places: list[Place], schema: StructType) -> DataFrame:

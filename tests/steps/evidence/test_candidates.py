@@ -8,7 +8,7 @@ import pyarrow.parquet as pq
 import pytest
 
 from sparkrank.config import Candidates
-from sparkrank.evidence.candidates import spam_candidates
+from sparkrank.evidence.candidates import OVER_THRESHOLDS, spam_candidates
 from sparkrank.evidence.cautions import (
     BARE_SUFFIX,
     FEW_SLICES,
@@ -50,6 +50,8 @@ def score(host: str, **values: Any) -> dict[str, Any]:
         "core_reached": True,
         "core_distance": 2,
         "priority": 1.0,
+        "reasons": ["it is there"],
+        "look_alikes": [],
     }
     return row | values
 
@@ -78,8 +80,9 @@ def measures(spark, rows: list[dict[str, Any]]):
     """Measures of every host, told apart by nothing."""
     schema = measures_schema()
     values = {"double": 0.25, "bigint": 4}
-    rest = [values[field.dataType.simpleString()] for field in schema.fields[2:]]
-    return spark.createDataFrame([(row["host"], row["priority"], *rest) for row in rows], schema)
+    rest = [values[field.dataType.simpleString()] for field in schema.fields[2:-2]]
+    given = [(row["host"], row["priority"], *rest, row["reasons"], row["look_alikes"]) for row in rows]
+    return spark.createDataFrame(given, schema)
 
 
 @pytest.fixture
@@ -109,6 +112,10 @@ CAUTIONS: dict[str, tuple[dict[str, Any], list[str]]] = {
         [NOT_REACHED, BARE_SUFFIX],
     ),
     "two.test": ({"relative_mass_low": 0.1, "suffix": "bare.test"}, [ONE_SLICE, BARE_SUFFIX]),
+    "may-be-honest.test": (
+        {"suffix": "bare.test", "look_alikes": ["may be a club", "may be a portal"]},
+        [BARE_SUFFIX, "may be a club", "may be a portal"],
+    ),
     "at-both.test": ({"scaled_pagerank": 10.0, "relative_mass": 0.5, "relative_mass_low": 0.5}, []),
 }
 NO_CANDIDATES = [
@@ -137,6 +144,7 @@ def test_each_caution_at_its_boundary(at_defaults, host) -> None:
 @pytest.mark.parametrize("host", CAUTIONS)
 def test_scores_are_taken_over_unchanged(at_defaults, host) -> None:
     given = score(host, **CAUTIONS[host][0])
+    given.pop("look_alikes")
     assert {name: at_defaults[host][name] for name in given} == given
 
 
@@ -155,6 +163,12 @@ def test_a_threshold_far_below_zero_lists_every_host_of_enough_pagerank_by_prior
     assert [row["host"] for row in found] == order
     assert [row["priority"] for row in found] == [2.7, 1.5, 0.9, 1e-9, 0.0]
     assert [row["rank"] for row in found] == [1, 2, 3, 4, 5]
+
+
+def test_a_candidate_without_a_reason_of_its_own_says_so(spark) -> None:
+    rows = [score("with.test", reasons=["one", "two"]), score("without.test", reasons=[])]
+    found = {row["host"]: row["reasons"] for row in candidates(spark, rows)}
+    assert found == {"with.test": ["one", "two"], "without.test": [OVER_THRESHOLDS]}
 
 
 def test_equal_priorities_order_by_host_over_all_partitions(spark, many_partitions) -> None:

@@ -4,6 +4,7 @@ import networkx as nx
 import numpy as np
 import pytest
 
+from sparkrank.kernels.reasons import CAUTIONS, REASONS, marks
 from sparkrank.kernels.shape import priority, shape_columns
 from sparkrank.kernels.sources import (
     KIND_NAMES,
@@ -113,6 +114,22 @@ def test_the_kernels_get_what_a_dense_inverse_gives(web, measured, dense) -> Non
         found = [rows[web.hosts[x]][name] for x in dense.hosts]
         found = np.array([np.nan if value is None else value for value in found], dtype=np.float64)
         np.testing.assert_allclose(found, values, rtol=1e-6, atol=1e-8, err_msg=name)
+
+
+def test_reasons_and_cautions_are_those_of_the_shape(web, measured, dense) -> None:
+    _, rows = measured
+    shape = shape_columns(dense.links, dense.arrays, DAMPING)
+    kinds = source_kinds(dense.links, dense.arrays, outside_support(dense.links, dense.arrays, DAMPING))
+    found = marks(shape, dense.arrays, kind_sums(dense.links, dense.arrays, kinds, DAMPING))
+    for k, x in enumerate(dense.hosts):
+        row = rows[web.hosts[x]]
+        assert row["reasons"] == [
+            text for text, holds in zip(REASONS, found.reasons[k], strict=True) if holds
+        ]
+        assert row["look_alikes"] == [
+            text for text, holds in zip(CAUTIONS, found.cautions[k], strict=True) if holds
+        ]
+    assert len(rows["target.example"]["reasons"]) == 3
 
 
 def test_kinds_of_sources_are_beside_the_links(web, measured, dense) -> None:
