@@ -8,6 +8,7 @@ import pyarrow as pa
 import pyarrow.parquet as pq
 
 from sparkrank.errors import InputRefused
+from sparkrank.inputs.attributes import attribute_kinds
 from sparkrank.inputs.files import (
     WHOLE_CONTENT_BYTES,
     DataFile,
@@ -51,7 +52,8 @@ class InputFile:
 class InputFacts:
     """What is known about an input before it is scanned.
 
-    `columns` are those of the program's that it has, `partition_keys` those of its `key=value` folders.
+    `columns` are those of the program's that it has, `attributes` the others if they are handed on, and
+    `partition_keys` those of its `key=value` folders.
     `cautions` are sentences for the log and the manifest, such as that only footers were fingerprinted.
     """
 
@@ -64,6 +66,7 @@ class InputFacts:
     partition_keys: tuple[str, ...]
     fingerprint: str
     cautions: tuple[str, ...]
+    attributes: tuple[str, ...] = ()
 
     @property
     def has_links(self) -> bool:
@@ -100,7 +103,7 @@ def check_edges(path: str) -> InputFacts:
 
 def check_hosts(path: str) -> InputFacts:
     """The facts about the list of further hosts at a path or URI; InputRefused where it cannot be used."""
-    return _check("input.hosts", resolve(path), _HOSTS)
+    return _check("input.hosts", resolve(path), _HOSTS, with_attributes=True)
 
 
 def read_schema(source: str, place: Place, file: DataFile) -> tuple[Any, int, bytes]:
@@ -130,14 +133,20 @@ def column_type(arrow_type: Any) -> str:
     return str(value_type)
 
 
-def _check(source: str, place: Place, columns: tuple[_Column, ...]) -> InputFacts:
+def _check(
+    source: str, place: Place, columns: tuple[_Column, ...], *, with_attributes: bool = False
+) -> InputFacts:
     where = f"{source} at {shown_value(str(place))}"
     listed = data_files(source, place)
     footers_only = len(listed) > MANY_FILES
+    own = tuple(column.name for column in columns)
 
     def check_file(file: DataFile) -> tuple[InputFile, dict[str, str]]:
         schema, rows, footer = read_schema(source, place, file)
-        types = _column_types(f"{where}: {shown_value(file.name)}", schema, columns)
+        here = f"{where}: {shown_value(file.name)}"
+        types = _column_types(here, schema, columns)
+        if with_attributes:
+            types |= attribute_kinds(here, schema, own)
         if footers_only or file.bytes > WHOLE_CONTENT_BYTES:
             fingerprint = footer_fingerprint(file, footer)
         else:
@@ -163,7 +172,8 @@ def _check(source: str, place: Place, columns: tuple[_Column, ...]) -> InputFact
         files=files,
         rows=rows,
         bytes=sum(file.bytes for file in files),
-        columns=tuple(types),
+        columns=tuple(name for name in types if name in own),
+        attributes=tuple(name for name in types if name not in own),
         partition_keys=keys,
         fingerprint=folder_fingerprint((file.name, file.fingerprint) for file in files),
         cautions=_cautions(source, files, footers_only),

@@ -326,3 +326,59 @@ def test_hosts_are_checked_alike(tmp_path: Path) -> None:
         f"input.hosts at {path}: h.parquet: expected a column host (text), found src, dst; "
         "name the column host"
     )
+
+
+def hosts_refusal(path: Path) -> str:
+    with pytest.raises(InputRefused) as caught:
+        check_hosts(str(path))
+    message = str(caught.value)
+    assert "\n" not in message
+    return message
+
+
+def test_further_columns_of_the_hosts_are_attributes(tmp_path: Path) -> None:
+    table = pa.table({"status": [1], "host": ["a.example"], "Sprache": ["de"], "alive": [True]})
+    facts = check_hosts(str(write(tmp_path / "h" / "0.parquet", table)))
+    assert (facts.columns, facts.attributes) == (("host",), ("status", "Sprache", "alive"))
+    # Another order and width of the same kind are the same columns.
+    other = pa.table({"Sprache": ["de"], "host": ["b.example"], "alive": [None], "status": [1]})
+    types = [
+        ("Sprache", pa.large_string()),
+        ("host", pa.string()),
+        ("alive", pa.bool_()),
+        ("status", pa.int8()),
+    ]
+    write(tmp_path / "h" / "1.parquet", other.cast(pa.schema(types)))
+    assert check_hosts(str(tmp_path / "h")).attributes == facts.attributes
+    assert check_edges(str(write(tmp_path / "e.parquet", edges(1, note=["x"])))).attributes == ()
+
+
+def test_attributes_that_cannot_be_handed_on(tmp_path: Path) -> None:
+    path = tmp_path / "h.parquet"
+    where = f"input.hosts at {path}: h.parquet"
+    many = {f"c{i}": [i] for i in range(32)}
+    assert len(check_hosts(str(write(path, pa.table({"host": ["a.example"], **many})))).attributes) == 32
+    write(path, pa.table({"host": ["a.example"], **many, "more": [1]}))
+    assert hosts_refusal(path) == (
+        f"{where}: expected at most 32 columns beside host, found 33; leave out those that no reviewer needs"
+    )
+    write(path, pa.table({"host": ["a.example"], "addresses": [["192.0.2.7"]]}))
+    found = hosts_refusal(path)
+    assert found.startswith(
+        f"{where}: expected column addresses to be text, numbers, booleans, dates or times, found list<"
+    )
+    assert found.endswith("; convert or leave out the column")
+    write(path, pa.table({"host": ["a.example"], "a\x1b[2J": [1]}))
+    assert hosts_refusal(path) == (
+        f"{where}: expected column names of at most 200 characters, none of them a control character, "
+        "found a\\x1b[2J; rename the column"
+    )
+    write(path, pa.Table.from_arrays([["a.example"], [1], [2]], names=["host", "note", "note"]))
+    assert hosts_refusal(path) == f"{where}: expected one column note, found 2; rename columns"
+    (tmp_path / "h").mkdir()
+    write(tmp_path / "h" / "0.parquet", pa.table({"host": ["a.example"], "note": [1]}))
+    write(tmp_path / "h" / "1.parquet", pa.table({"host": ["a.example"], "note": ["x"]}))
+    assert hosts_refusal(tmp_path / "h") == (
+        f"input.hosts at {tmp_path / 'h'}: expected column note alike in every file, found a whole number in "
+        "0.parquet and text in 1.parquet; write the files with one schema"
+    )
