@@ -17,7 +17,7 @@ from sparkrank.inputs import check_hosts
 from sparkrank.names.canonical import canonical_host
 from sparkrank.names.suffixes import SuffixRules
 from sparkrank.places import resolve
-from tests.steps.graphs import RULES, tasks_in_process
+from tests.steps.graphs import RULES, make_crawl, tasks_in_process
 
 
 def gather(
@@ -218,3 +218,19 @@ def test_a_column_for_rows_of_an_engine_and_in_memory(spark, tmp_path: Path) -> 
     assert none.joined(rows, "source", "attributes").dtypes[-1] == ("attributes", "string")
     assert none.added(table, "source", "attributes")["attributes"].to_pylist() == [None] * 3
     assert none.added(table, "source", "attributes").schema.field("attributes").type == pa.string()
+
+
+def test_no_score_sees_them(tmp_path: Path) -> None:
+    """The same hosts with and without attributes: the same rows to the last bit."""
+    edges = [("a.example", "b.example"), ("b.example", "target.test"), ("c.example", "target.test")]
+    hosts = ["lonely.example", "a.example", "target.test"]
+    told = {"status": [404, 200, 410], "language": ["de", None, "en"], "trust": [0.0, 1.0, 0.0]}
+    crawls = [
+        make_crawl(None, tmp_path / name, edges, [("a.example", "one")], hosts=hosts)
+        for name in ("without", "with")
+    ]
+    assert crawls[1].hosts is not None
+    pq.write_table(pa.table({"host": hosts, **told}), crawls[1].hosts)
+    without, with_attributes = (crawl.run().table for crawl in crawls)
+    assert without.num_rows == 5
+    assert with_attributes.equals(without)
