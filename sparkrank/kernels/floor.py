@@ -106,7 +106,7 @@ SHAPES = {
         gain=_around_a_ring,
     ),
     "two-tier": FarmShape(
-        meaning="a quarter links to the target, which links back to them; the others link to that quarter",
+        meaning="a quarter (one at least) links to the target, which links back; the others link to those",
         least=2,
         own=_two_tiers,
         gain=_back_and_forth,

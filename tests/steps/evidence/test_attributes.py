@@ -1,5 +1,6 @@
 """What the hosts input says of hosts, against a reading of its rows one by one in plain Python."""
 
+import contextlib
 import datetime as dt
 import decimal
 import json
@@ -21,9 +22,13 @@ from tests.steps.graphs import RULES, make_crawl, tasks_in_process
 
 
 def gather(
-    folder: Path, tables: list[pa.Table], wanted: list[str], rules: SuffixRules | None = None
+    folder: Path,
+    tables: list[pa.Table],
+    wanted: list[str],
+    rules: SuffixRules | None = None,
+    spark: Any = None,
 ) -> AttributeFiles:
-    """The attributes of the wanted hosts from an input of these files."""
+    """The attributes of the wanted hosts from an input of these files; tasks in process without Spark."""
     (folder / "hosts").mkdir(parents=True)
     for number, table in enumerate(tables):
         pq.write_table(table, folder / "hosts" / f"{number}.parquet", row_group_size=3)
@@ -34,8 +39,8 @@ def gather(
     pq.write_table(pa.table({"host": second, "source": second}), folder / "support.parquet")
     facts = check_hosts(str(folder / "hosts"))
     files = [resolve(str(folder / f"{name}.parquet")) for name in ("measures", "support")]
-    with tasks_in_process():
-        return gather_attributes(None, facts, rules, files, resolve(str(folder / "work")))
+    with tasks_in_process() if spark is None else contextlib.nullcontext():
+        return gather_attributes(spark, facts, rules, files, resolve(str(folder / "work")))
 
 
 def said(found: AttributeFiles) -> dict[str, str]:
@@ -206,7 +211,8 @@ def test_without_attributes_nothing_is_read(tmp_path: Path) -> None:
 
 
 def test_a_column_for_rows_of_an_engine_and_in_memory(spark, tmp_path: Path) -> None:
-    found = gather(tmp_path, [first_file(), second_file()], WANTED)
+    found = gather(tmp_path, [first_file(), second_file()], WANTED, RULES, spark)
+    assert said(found) == expected([first_file(), second_file()], WANTED, RULES)
     about_b = said(found)["b.example"]
     table = pa.table({"source": ["b.example", "c.example", "b.example"], "n": [1, 2, 3]})
     added = found.added(table, "source", "source_attributes")
