@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING
 
 sys.path.insert(0, str(Path(__file__).resolve().parent.parent))
 
-from sparkrank import stages
+from sparkrank import ranking, stages
 from sparkrank.entry import JobContext, run_job
 
 if TYPE_CHECKING:
@@ -21,7 +21,7 @@ def main(argv: Sequence[str] | None = None, session: "SparkSession | None" = Non
     def body(context: JobContext) -> None:
         if stages.open_run(context, inputs.checked) is None:
             scored = stages.score(context, inputs.checked)
-            ranked = stages.rank(context, inputs.checked, scored)
+            ranked = ranking.rank(context, inputs.checked, scored)
             stages.conclude(context, inputs.checked, scored, ranked)
 
     return run_job(

@@ -43,6 +43,7 @@ class JobContext:
     run: RunFolder
     replace: bool
     job: str
+    arguments: argparse.Namespace = field(default_factory=argparse.Namespace)
     ui: bool = False
     session: "SparkSession | None" = None
     _is_own: bool = field(default=False, init=False, repr=False)
@@ -83,17 +84,18 @@ def run_job(
     *,
     example: str,
     check_inputs: Callable[[Config], None] | None = None,
+    add_arguments: Callable[[argparse.ArgumentParser], None] | None = None,
 ) -> int:
     """Run a job from its arguments to its exit status; never raises for what a user can meet.
 
     `argv` as in argparse: None means the process's own. `session` is a running one to use, or None to
     open one when `body` asks for it. `check_inputs` looks at local inputs before Java starts.
-    `example` is a command line for the help text.
+    `example` is a command line for the help text, `add_arguments` adds the job's own arguments.
     """
     known: _Known | None = None
     debug, message, details, status = False, "", "", 0
     try:
-        arguments = _parse(job, description, argv, example)
+        arguments = _parse(job, description, argv, example, add_arguments)
         debug = arguments.debug
         with _logging(quiet=arguments.quiet, debug=debug):
             config = load_config(arguments.config, arguments.set, local_master=master_is_local(session))
@@ -102,7 +104,7 @@ def run_job(
                 check_inputs(config)
             if session is None:
                 check_runtime()
-            _run(job, body, known, session, replace=arguments.replace, ui=arguments.ui)
+            _run(job, body, known, session, arguments)
     except SystemExit as end:  # argparse, after --help
         return int(end.code or 0)
     except KeyboardInterrupt:
@@ -137,7 +139,13 @@ class _Parser(argparse.ArgumentParser):
         raise ConfigError(f"arguments: {message}; see --help")
 
 
-def _parse(job: str, description: str, argv: Sequence[str] | None, example: str) -> argparse.Namespace:
+def _parse(
+    job: str,
+    description: str,
+    argv: Sequence[str] | None,
+    example: str,
+    add_arguments: Callable[[argparse.ArgumentParser], None] | None,
+) -> argparse.Namespace:
     parser = _Parser(
         prog=job,
         description=description,
@@ -161,6 +169,8 @@ def _parse(job: str, description: str, argv: Sequence[str] | None, example: str)
     parser.add_argument("--ui", action="store_true", help="open Spark's web page while running")
     parser.add_argument("--quiet", action="store_true", help="warnings and errors only")
     parser.add_argument("--debug", action="store_true", help="show the traceback of an unexpected error")
+    if add_arguments is not None:
+        add_arguments(parser)
     return parser.parse_args(argv)
 
 
@@ -210,14 +220,20 @@ def _run(
     body: Callable[[JobContext], None],
     known: _Known,
     session: "SparkSession | None",
-    *,
-    replace: bool,
-    ui: bool,
+    arguments: argparse.Namespace,
 ) -> None:
     run_id = known.config.run.id
     with hold_run(known.output, run_id) as lock:
         run = RunFolder(output=known.output, run_id=run_id, attempt_id=known.attempt_id, lock=lock)
-        context = JobContext(config=known.config, run=run, replace=replace, job=job, ui=ui, session=session)
+        context = JobContext(
+            config=known.config,
+            run=run,
+            replace=arguments.replace,
+            job=job,
+            arguments=arguments,
+            ui=arguments.ui,
+            session=session,
+        )
         try:
             body(context)
         finally:

@@ -1,4 +1,4 @@
-"""The stages of a run as the jobs call them: check, build, score, rank, conclude.
+"""The stages of a run as the jobs call them: check, build, score, conclude; `ranking` has the one between.
 
 A stage adopts the record of the same stage from an earlier attempt if it was made from the same
 things; else it does the work and commits a record of its own.
@@ -17,9 +17,6 @@ from sparkrank import __version__
 from sparkrank.config import Config
 from sparkrank.entry import JobContext
 from sparkrank.errors import InputRefused
-from sparkrank.evidence.candidates import spam_candidates
-from sparkrank.evidence.cautions import CoreStrength, core_strength
-from sparkrank.evidence.support import gather_support
 from sparkrank.graph.build import Graph, build_graph
 from sparkrank.inputs import InputFacts, check_edges, check_hosts
 from sparkrank.names.lists import HostLists, read_lists
@@ -32,7 +29,7 @@ from sparkrank.publish.manifest import Manifest, check_run, write_manifest
 from sparkrank.publish.records import StepRecord, adopt, commit_step, missing_file
 from sparkrank.publish.write import publish_table
 from sparkrank.scores.host_scores import host_scores
-from sparkrank.tables import CANDIDATE_SUPPORT, HOST_SCORES, REJECTED_ROWS, SPAM_CANDIDATES
+from sparkrank.tables import HOST_SCORES, REJECTED_ROWS
 
 if TYPE_CHECKING:
     from pyspark.sql import DataFrame
@@ -163,51 +160,6 @@ def scored_before(context: JobContext, inputs: RunInputs) -> StepRecord:
     return record
 
 
-def rank(context: JobContext, inputs: RunInputs, scored: StepRecord) -> StepRecord:
-    """Publishes ``spam_candidates`` and ``candidate_support``."""
-    fingerprint = inputs.run_fingerprint
-    if (record := adopt(context.run, "rank_candidates", fingerprint)) is not None:
-        log.info("candidates: done before")
-        return record
-    strength = _strength(context.config, scored)
-    scores = [context.run.output.below(file.path) for file in scored.tables["host_scores"].files]
-    found = gather_support(
-        context.spark,
-        build(context, inputs),
-        resolve(context.config.run.work).child("evidence", fingerprint[:24]),
-        scores,
-        inputs.lists.core,
-        context.config.candidates,
-        context.config.evidence,
-        damping=context.config.solve.damping,
-        good_share=context.config.mass.good_share,
-    )
-    rows = context.spark.read.parquet(*(place.uri for place in scores))
-    measures = found.measures_frame(context.spark)
-    candidates = spam_candidates(rows, measures, context.config.candidates, strength)
-    tables = {
-        "spam_candidates": publish_table(candidates, SPAM_CANDIDATES, context.run),
-        "candidate_support": publish_table(
-            found.support_frame(context.spark), CANDIDATE_SUPPORT, context.run
-        ),
-    }
-    candidates.sparkSession.catalog.clearCache()
-    record = StepRecord(
-        step="rank_candidates",
-        fingerprint=fingerprint,
-        tables=tables,
-        facts={
-            "core_start": strength.start,
-            "boosters_hidden_by_core_link": strength.hidden_boosters,
-            "cautions": strength.cautions,
-            "evidence": found.facts(),
-        },
-    )
-    commit_step(context.run, record)
-    found.folder.place.delete_tree()
-    return record
-
-
 def conclude(context: JobContext, inputs: RunInputs, scored: StepRecord, ranked: StepRecord) -> Manifest:
     """Writes the manifest, which makes the run count, and removes what it replaces."""
     known = inputs.lists.known_spam
@@ -247,17 +199,6 @@ def conclude(context: JobContext, inputs: RunInputs, scored: StepRecord, ranked:
 
 def _facts(facts: InputFacts | None) -> dict[str, Any] | None:
     return None if facts is None else {"fingerprint": facts.fingerprint, "rows": facts.rows}
-
-
-def _strength(config: Config, scored: StepRecord) -> CoreStrength:
-    return core_strength(
-        good_share=config.mass.good_share,
-        n_hosts=scored.facts["graph"]["hosts"],
-        n_core=scored.facts["core"]["matched"],
-        slices=len(scored.facts["core"]["slices"]),
-        damping=config.solve.damping,
-        min_relative_mass=config.candidates.min_relative_mass,
-    )
 
 
 def _rejected(context: JobContext, graph: Graph, inputs: RunInputs, solved: SolvedHosts) -> DataFrame:

@@ -25,16 +25,28 @@ def spam_candidates(
         & (sf.col("relative_mass") >= thresholds.min_relative_mass)
         & ~sf.col("is_core")
     )
+    return _ranked(with_evidence(scores.where(over), scores, measures, strength, thresholds))
+
+
+def with_evidence(
+    chosen: DataFrame,
+    scores: DataFrame,
+    measures: DataFrame,
+    strength: CoreStrength,
+    thresholds: Candidates,
+) -> DataFrame:
+    """Some rows of ``host_scores`` with their measures, reasons and cautions."""
+    from pyspark.sql import functions as sf
+
     bare = bare_suffixes(scores).withColumn("is_bare", sf.lit(True))
-    chosen = scores.where(over).join(measures, "host", "left")
+    chosen = chosen.join(measures, "host", "left")
     chosen = chosen.join(sf.broadcast(bare), sf.col("suffix").eqNullSafe(sf.col("bare_suffix")), "left")
     chosen = chosen.withColumn("is_bare_suffix", sf.coalesce(sf.col("is_bare"), sf.lit(False)))
     chosen = chosen.withColumn("cautions", caution_column(strength, thresholds.min_relative_mass))
     none = sf.size("reasons") == 0
     reasons = sf.when(none, sf.array(sf.lit(OVER_THRESHOLDS))).otherwise(sf.col("reasons"))
     chosen = chosen.withColumn("reasons", reasons)
-    chosen = chosen.drop("look_alikes", "bare_suffix", "is_bare", "is_bare_suffix")
-    return _ranked(chosen)
+    return chosen.drop("look_alikes", "bare_suffix", "is_bare", "is_bare_suffix")
 
 
 def _ranked(chosen: DataFrame) -> DataFrame:

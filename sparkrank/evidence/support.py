@@ -17,6 +17,7 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 import pyarrow as pa
+import pyarrow.parquet as pq
 from numpy.typing import NDArray
 
 from sparkrank.arrays import write_arrays
@@ -31,7 +32,7 @@ from sparkrank.kernels.xxhash import xxh64
 from sparkrank.names.lists import HostList
 from sparkrank.names.octets import octets_of
 from sparkrank.places import Place
-from sparkrank.tables import CANDIDATE_SUPPORT, SPAM_CANDIDATES, spark_schema
+from sparkrank.tables import CANDIDATE_SUPPORT, SPAM_CANDIDATES, arrow_schema, spark_schema
 from sparkrank.tables.measures import MEASURES
 from sparkrank.tasks import TaskRunner
 
@@ -60,6 +61,7 @@ class SupportFiles:
     groups: int
     steps: int
     links: int
+    rows: int
     least_share_a_link: float
 
     @property
@@ -73,6 +75,12 @@ class SupportFiles:
     def support_frame(self, spark: SparkSession) -> DataFrame:
         """Rows of ``candidate_support``."""
         return _frame(spark, self.support, spark_schema(CANDIDATE_SUPPORT))
+
+    def support_table(self) -> pa.Table:
+        """The same rows here; for few."""
+        schema = arrow_schema(CANDIDATE_SUPPORT)
+        parts = [pq.read_table(place.path, filesystem=place.filesystem) for place in self.support]
+        return pa.concat_tables([schema.empty_table(), *(part.cast(schema) for part in parts)])
 
     def measures_frame(self, spark: SparkSession) -> DataFrame:
         """The evidence columns of ``spam_candidates``, with the host."""
@@ -136,7 +144,7 @@ def gather_support(
         log.info("evidence: %s hosts, %.1f s", f"{n_targets:,}", time.monotonic() - started)
         if not n_targets:
             return SupportFiles(
-                folder=folder, targets=0, groups=0, steps=0, links=0, least_share_a_link=share
+                folder=folder, targets=0, groups=0, steps=0, links=0, rows=0, least_share_a_link=share
             )
         gathering = Gathering(
             graph=graph,
@@ -161,6 +169,7 @@ def gather_support(
         groups=len(groups),
         steps=len(kept) - 1,
         links=links,
+        rows=sum(rows),
         least_share_a_link=share,
     )
 

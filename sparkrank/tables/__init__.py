@@ -5,12 +5,19 @@
 """
 
 from sparkrank.tables.declared import TABLES, reference_markdown, table_named
-from sparkrank.tables.evidence import CANDIDATE_SUPPORT, SPAM_CANDIDATES
+from sparkrank.tables.evidence import (
+    CANDIDATE_SUPPORT,
+    EXPLAINED_HOSTS,
+    EXPLAINED_SUPPORT,
+    SPAM_CANDIDATES,
+)
 from sparkrank.tables.scores import HOST_SCORES, REJECTED_ROWS
 from sparkrank.tables.spec import ColumnSpec, ColumnType, TableSpec, arrow_schema, spark_schema
 
 __all__ = [
     "CANDIDATE_SUPPORT",
+    "EXPLAINED_HOSTS",
+    "EXPLAINED_SUPPORT",
     "HOST_SCORES",
     "REJECTED_ROWS",
     "SPAM_CANDIDATES",

@@ -1,10 +1,15 @@
 """All published tables by name, and their reference."""
 
-from sparkrank.tables.evidence import CANDIDATE_SUPPORT, SPAM_CANDIDATES
+from sparkrank.tables.evidence import (
+    CANDIDATE_SUPPORT,
+    EXPLAINED_HOSTS,
+    EXPLAINED_SUPPORT,
+    SPAM_CANDIDATES,
+)
 from sparkrank.tables.scores import HOST_SCORES, REJECTED_ROWS
 from sparkrank.tables.spec import TableSpec, table_markdown
 
-_ALL = (HOST_SCORES, SPAM_CANDIDATES, CANDIDATE_SUPPORT, REJECTED_ROWS)
+_ALL = (HOST_SCORES, SPAM_CANDIDATES, CANDIDATE_SUPPORT, REJECTED_ROWS, EXPLAINED_HOSTS, EXPLAINED_SUPPORT)
 
 TABLES: dict[str, TableSpec] = {table.name: table for table in _ALL}
 """All tables by name, in the order of the reference."""

@@ -160,3 +160,33 @@ CANDIDATE_SUPPORT = TableSpec(
         *(_of_source(name) for name in SOURCE_COLUMNS),
     ),
 )
+
+_QUESTION = (
+    "Hosts that somebody asked about last, listed or not, with the evidence that candidates have. For a host "
+    "that is not listed, others count as candidates only if they were asked for with it. "
+)
+
+EXPLAINED_HOSTS = TableSpec(
+    name="explained_hosts",
+    meaning=_QUESTION + LEAD,
+    key=("host",),
+    order=("host",),
+    columns=(
+        *(
+            dataclasses.replace(
+                column,
+                nullable=True,
+                meaning=f"{column.meaning} Null for a host that is no candidate.",
+            )
+            if column.name == "rank"
+            else column
+            for column in SPAM_CANDIDATES.columns
+        ),
+    ),
+)
+
+EXPLAINED_SUPPORT = dataclasses.replace(
+    CANDIDATE_SUPPORT,
+    name="explained_support",
+    meaning=f"What `candidate_support` has, of the hosts in `explained_hosts`. {LEAD}",
+)

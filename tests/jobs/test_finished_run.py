@@ -13,7 +13,8 @@ from tests.jobs.desk import RUN, sha256
 def test_every_file_is_what_the_manifest_says(finished) -> None:
     manifest = finished.manifest()
     assert (manifest["run_id"], manifest["status"]) == (RUN, "complete")
-    assert set(manifest["tables"]) == set(TABLES)
+    # All but the answers to questions, which nobody has asked.
+    assert set(manifest["tables"]) == {name for name in TABLES if not name.startswith("explained_")}
     for name, entry in manifest["tables"].items():
         for file in entry["files"]:
             path = finished.output / file["path"]

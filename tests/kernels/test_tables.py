@@ -109,7 +109,11 @@ AGREED = {
         ("rows", "long", False),
     ],
 }
+AGREED["explained_hosts"] = [("rank", "int", True), *AGREED["spam_candidates"][1:]]
+AGREED["explained_support"] = AGREED["candidate_support"]
 ORDERS = {
+    "explained_hosts": ("host",),
+    "explained_support": ("host", "kind", "position"),
     "host_scores": ("host",),
     "spam_candidates": ("rank",),
     "candidate_support": ("host", "kind", "position"),
