@@ -179,15 +179,19 @@ NO_GROUPS = GroupFiles(groups=0, members=0, rows=[], candidates=[])
 
 
 def find_groups(
-    spark: SparkSession, gathering: Gathering, strong_links: list[int], *, most_links: int = MOST_LINKS
+    spark: SparkSession,
+    gathering: Gathering | None,
+    strong_links: list[int],
+    *,
+    most_links: int = MOST_LINKS,
 ) -> GroupFiles:
     """Groups of the candidates whose strong links were written (``write_strong_links``).
 
-    ``strong_links[i]`` is the number of links in file i.
+    ``gathering`` is None where there was no candidate; ``strong_links[i]`` is the number of links in file i.
     """
     started = time.monotonic()
     n_links = sum(strong_links)
-    if n_links == 0:
+    if gathering is None or n_links == 0:
         return NO_GROUPS
     work = GroupWork(gathering, len(strong_links), -(-n_links // most_links))
     if work.n_parts == 1:

@@ -9,6 +9,16 @@ _NO_OWNER = (
     "It names no owner: friends, clubs, platforms and the sites of one maker are linked like this, too."
 )
 
+FARM_GROUP = ColumnSpec(
+    name="farm_group",
+    type=ColumnType.STRING,
+    unit="text",
+    nullable=True,
+    meaning="Name of the group in `farm_groups` that the host is a member of. Null where it is in none.",
+    caution=f"{_GROUP_LEAD} {_NO_OWNER}",
+)
+"""The column by which other tables name the group of a host."""
+
 FARM_GROUPS = TableSpec(
     name="farm_groups",
     meaning="Candidates and the hosts that support them, as far as links say that they belong together: one "
