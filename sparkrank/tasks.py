@@ -7,6 +7,7 @@ whatever the driver adds up, it adds in the same order every time.
 
 from __future__ import annotations
 
+import gc
 from collections.abc import Callable, Iterable, Iterator
 from typing import TYPE_CHECKING, Any
 
@@ -74,6 +75,9 @@ class _NamedTask:
         self._what = what
 
     def __call__(self, numbers: Iterable[int]) -> Iterator[Report]:
+        if not gc.get_freeze_count():
+            # PySpark collects garbage after every task; what was imported by now never is any.
+            gc.freeze()
         for number in numbers:
             try:
                 yield self._task(number)

@@ -59,6 +59,7 @@ def spark(tmp_path_factory: pytest.TempPathFactory) -> Iterator["SparkSession"]:
         .config("spark.driver.host", "127.0.0.1")
         # No web page, no port, a second less to start.
         .config("spark.ui.enabled", "false")
+        .config("spark.python.unix.domain.socket.enabled", "true")
         .config("spark.ui.showConsoleProgress", "false")
         # The default of 200 empty shuffle partitions is most of a small test's time.
         .config("spark.sql.shuffle.partitions", "2")
