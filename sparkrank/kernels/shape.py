@@ -11,8 +11,8 @@ gone, and how many hosts with a standing of their own speak for it?
 - I, the *breadth of independent support*: sources count by their *standing* e/(e + 1/10), from 0 for a host
   that nobody else supports to 1, and one link among d others counts 1/√d.
 - V, the *variety* of sources, and H, how *alike* they are.  Draw two by contribution: V is the chance that
-  they are two, low for what one strong source hands on; H that they have about as many out-links and as
-  many in-links, or are the same.  What is made has many sources of one kind.
+  they are two, low for what one strong source hands on; H that they have about as many out-links and about
+  as many in-links, or are the same.  What is made has many sources of one kind.
 - d, the share from the candidate's own domain: an owner's sub-hosts may well support each other.
 - h, what the candidate hands on to higher candidates: they come first, it is looked at with them.
 - r, 1 where the core reaches, else 0.85: what it does not reach is unknown, and whole honest communities are.
@@ -50,8 +50,7 @@ HANDED_ON_LOSS = 0.8
 """What handing all on to a clearly higher candidate costs: it is that one's review that decides."""
 NOT_REACHED = 0.85
 """Unknown is not spam; nor is it proof of the contrary, and new farms are unreached as well."""
-_CLASSES_A_DOUBLING = 2
-_MOST_IN_LINKS = 5
+_MOST_DOUBLINGS = 64
 
 
 class ShapeColumns(NamedTuple):
@@ -100,10 +99,14 @@ def concentration(
 
 
 def degree_class(links: DirectLinks) -> NDArray[np.int64]:
-    """Sources with about as many out-links (within a factor of √2) and as many in-links (5 and more are
-    one) are of one class, shape (m,)."""
-    outward = np.floor(_CLASSES_A_DOUBLING * np.log2(np.maximum(links.out_degree, 1))).astype(np.int64)
-    classes: NDArray[np.int64] = outward * (_MOST_IN_LINKS + 1) + np.minimum(links.in_degree, _MOST_IN_LINKS)
+    """Sources with about as many out-links and about as many in-links are of one class, shape (m,).
+
+    A class is a doubling: 1, 2 and 3, 4 to 7 out-links and so on; none, 1 and 2, 3 to 6 in-links and so on.
+    """
+    # The binary exponent, not a logarithm: whole numbers to the last bit.
+    outward = np.frexp(np.maximum(links.out_degree, 1).astype(np.float64))[1]
+    inward = np.frexp(links.in_degree + 1.0)[1]
+    classes: NDArray[np.int64] = outward.astype(np.int64) * _MOST_DOUBLINGS + inward
     return classes
 
 

@@ -24,7 +24,7 @@ OPEN_PAGE_LINKS = 10
 
 # A link to a host that would hardly notice its loss is no support of it.
 _OWED = 0.01
-_CLEARLY_HIGHER = 1.2
+_CLEARLY_HIGHER = 2.0
 
 CLOSE, OPEN_PAGE, INDEPENDENT = 0, 1, 2
 KIND_NAMES = ("close", "open_page", "independent")
@@ -107,7 +107,8 @@ def hands_on(
     """What a link from one candidate to another adds to ``handed_on``, shape (m,): its T, or 0 where the
     other's score is not clearly higher or owes it less than a hundredth.
 
-    Partners of an alliance differ by little and hand nothing on; a tier differs from the next by much.
+    Clearly is twice: partners of an alliance or of a link exchange seldom differ by so much, and each is
+    looked at in its own right; a tier of several hosts mostly differs from the next by more.
     """
     owed = damping * score * transition >= _OWED * to_score
     return np.where((to_score >= _CLEARLY_HIGHER * score) & owed, transition, 0.0)

@@ -8,7 +8,7 @@ import pytest
 from numpy.testing import assert_allclose
 from numpy.typing import NDArray
 
-from sparkrank.kernels.shape import ShapeColumns, concentration, priority, shape_columns
+from sparkrank.kernels.shape import ShapeColumns, concentration, degree_class, priority, shape_columns
 from sparkrank.kernels.sources import outside_support
 from tests.kernels.kernels.supports import DAMPING, Support, gathered, random_edges
 
@@ -74,6 +74,20 @@ def test_alike_sources_have_about_as_many_links_in_and_out() -> None:
     8/9 and 1/9."""
     support = gathered(8, [(1, 0), (2, 0), (3, 0), (3, 4), (3, 5), (3, 6)], [0])
     assert_allclose(shape_of(support).alike_sources, (8 / 9) ** 2 + (1 / 9) ** 2, rtol=1e-12)
+
+
+def test_a_class_of_sources_is_a_doubling_of_links_out_and_of_links_in() -> None:
+    """Bounds of the classes, by Python's own count of binary digits."""
+    out_degree, in_degree = (side.ravel() for side in np.meshgrid(np.arange(1, 34), np.arange(34)))
+    links = gathered(4, [(1, 0)], [0]).links._replace(out_degree=out_degree, in_degree=in_degree)
+    found = degree_class(links)
+    pairs = zip(out_degree.tolist(), in_degree.tolist(), strict=True)
+    expected = [(out.bit_length(), (inward + 1).bit_length()) for out, inward in pairs]
+    numbers: dict[tuple[int, int], set[int]] = {}
+    for pair, number in zip(expected, found.tolist(), strict=True):
+        numbers.setdefault(pair, set()).add(number)
+    assert all(len(each) == 1 for each in numbers.values())
+    assert len(set().union(*numbers.values())) == len(numbers)
 
 
 def test_concentration_of_candidates_without_links_or_weight_is_zero() -> None:

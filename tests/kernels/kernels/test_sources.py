@@ -146,6 +146,6 @@ def test_kind_sums_of_a_candidate_without_links_and_of_one_that_lives_on_its_fee
 
 
 def test_a_link_hands_on_what_a_higher_candidate_owes_to_it() -> None:
-    """To a higher one; to one hardly higher; to a giant that would hardly notice."""
-    found = hands_on(np.array([0.5, 0.5, 0.5]), np.full(3, 20.0), np.array([30.0, 23.0, 900.0]), DAMPING)
+    """To one of twice its score; to one not quite; to a giant that would hardly notice."""
+    found = hands_on(np.array([0.5, 0.5, 0.5]), np.full(3, 20.0), np.array([40.0, 39.0, 900.0]), DAMPING)
     assert_array_equal(found, [0.5, 0.0, 0.0])
