@@ -14,7 +14,7 @@ from numpy.typing import NDArray
 from sparkrank.arrays import read_arrays, write_arrays
 from sparkrank.evidence.group_work import GroupWork
 from sparkrank.evidence.values import host_names
-from sparkrank.kernels.belonging import LEAST_OWED, StrongLinks
+from sparkrank.kernels.belonging import LEAST_OWED, LEAST_STRONG, StrongLinks
 from sparkrank.kernels.components import Edges, labels
 from sparkrank.kernels.group_shapes import SHAPE_NAMES, GroupSums, hands_over, shapes
 from sparkrank.places import Place
@@ -77,6 +77,10 @@ class _Inside:
         self.supports[own] = True
         self.hands_on[own[hands_over(score[own], score[to])]] = True
 
+    def keep(self, groups: NDArray[np.bool_]) -> None:
+        """Leaves out the sums of other groups."""
+        self.sums = {name: sums[groups] for name, sums in self.sums.items()}
+
     def _add(self, name: str, group: NDArray[np.int64], values: NDArray[np.float64]) -> None:
         self.sums[name] += np.bincount(group, values, minlength=self._n)
 
@@ -99,6 +103,10 @@ class Describe:
         inside = _Inside(self.work, members, n_groups)
         for file in range(self.work.n_files):
             inside.add(self.work.links_of_file(file))
+        members, explained = self._explained(members, inside)
+        n_groups = len(explained)
+        if n_groups == 0:
+            return 0
         mass, domain = self._values(members)
         role = np.full(len(members.host), BOOSTER, dtype=np.int8)
         own = np.flatnonzero(members.own >= 0)
@@ -110,6 +118,7 @@ class Describe:
                 "host": members.host,
                 "group": members.group,
                 "role": role,
+                "explained_share": explained,
                 **self._columns(members, own, inside, mass, domain, n_groups),
             },
         )
@@ -142,6 +151,23 @@ class Describe:
         members = members._replace(group=number[members.group])
         return members, int(np.count_nonzero(enough))
 
+    def _explained(self, members: Members, inside: _Inside) -> tuple[Members, NDArray[np.float64]]:
+        """Members of the groups that explain enough, counted anew, and what these explain: (groups,).
+
+        Shares are of what in-links carry to the candidates; ``inside`` is left with the same groups.
+        """
+        own = np.flatnonzero(members.own >= 0)
+        score = self.work.gathering.targets.score[members.own[own]]
+        given = inside.sums["given"]
+        carried = np.bincount(members.group[own], score - 1.0, minlength=len(given))
+        enough = given >= LEAST_STRONG * carried
+        explained = np.minimum(1.0, given[enough] / carried[enough])
+        inside.keep(enough)
+        kept = enough[members.group]
+        number = np.cumsum(enough) - 1
+        members = Members(*(values[kept] for values in members))
+        return members._replace(group=number[members.group]), explained
+
     def _values(self, members: Members) -> tuple[NDArray[np.float64], NDArray[np.int64]]:
         """Absolute mass and (a hash of) the domain of each member."""
         neighbours = self.work.gathering.neighbours
@@ -170,8 +196,6 @@ class Describe:
         hosts = np.bincount(members.group, minlength=n_groups)
         targets = np.bincount(group, minlength=n_groups)
         final = np.bincount(group[~inside.hands_on[numbers]], minlength=n_groups)
-        scores = self.work.gathering.targets.score[numbers]
-        carried = np.bincount(group, scores - 1.0, minlength=n_groups)
         domains, largest = _domains(members.group, domain, n_groups)
         return {
             "shape": shapes(GroupSums(candidates=targets, final=final, **inside.sums)),
@@ -181,7 +205,6 @@ class Describe:
             "domains": domains,
             "largest_domain_share": largest / hosts,
             "total_mass": np.bincount(members.group, mass, minlength=n_groups),
-            "explained_share": np.minimum(1.0, inside.sums["given"] / carried),
         }
 
     def _write_names(self, members: Members, own: NDArray[np.int64], mass: NDArray[np.float64]) -> None:

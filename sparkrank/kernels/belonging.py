@@ -3,7 +3,8 @@
 A link is *strong* if its source gives a large part of what it has to the candidate and looks close
 (kernels.sources): a tenth of its out-weight or more.  So no host has more than ten strong links, and a
 directory has none, however many candidates it links to.  A candidate whose strong links bring less than a
-tenth of what its in-links give has none: they are not what its score is made of.
+quarter of what its in-links give has none: they are not what its score is made of.  So it is with a group:
+where its members, who are in no other, bring its candidates less, it is none.
 
 What holds two candidates together is one of two things:
 
@@ -33,8 +34,9 @@ from sparkrank.kernels.sources import (
 
 LEAST_HANDED = 0.1
 """Part of a source's out-weight from which its link is strong: a booster with nine decoys still has it."""
-LEAST_STRONG = 0.1
-"""Part of what in-links give that strong links bring at least, or they count for nothing."""
+LEAST_STRONG = 0.25
+"""Part of what in-links give that strong links bring at least, or they count for nothing: everybody has some
+small sources, and a farm's decoys are among them."""
 LEAST_OWED = 0.01
 """Part that one candidate gives another at least, or the other would hardly notice its loss."""
 LEAST_SHARED = 0.25

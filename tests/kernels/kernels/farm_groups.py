@@ -7,6 +7,7 @@ import numpy as np
 
 from sparkrank.kernels.belonging import (
     LEAST_OWED,
+    LEAST_STRONG,
     StrongLinks,
     held_by_links,
     held_by_sources,
@@ -59,10 +60,10 @@ def groups_of(
         members = [host for host in range(n) if group_of.get(host) == first]
         if len(members) >= 3:
             found.append(_described(first, members, group_of, strong, own, candidates, support, found_homes))
-    return found
+    return [group for group in found if group is not None]
 
 
-def _described(first, members, group_of, strong, own, candidates, support, found_homes) -> Group:
+def _described(first, members, group_of, strong, own, candidates, support, found_homes) -> Group | None:
     inside = np.array(
         [
             group_of[candidates[x]] == first == group_of.get(u)
@@ -86,5 +87,8 @@ def _described(first, members, group_of, strong, own, candidates, support, found
         given_to_one=np.array([strong.given[alone].sum()]),
         circling=np.array([strong.circling[alone].sum()]),
     )
+    carried = sum(support.score[host] - 1 for host in in_group)
+    if sums.given[0] < LEAST_STRONG * carried:
+        return None
     shape = SHAPE_NAMES[shapes(sums)[0]]
     return Group(in_group, [host for host in members if host not in candidates], shape)

@@ -121,3 +121,19 @@ def test_a_candidate_that_honest_hosts_carry_has_no_strong_links() -> None:
     assert len(strong.source) == 0
     more, _ = strong_of(300, [*edges, *fan(range(14, 20), 0)], [0])
     assert more.source.tolist() == list(range(13, 20))
+
+
+@pytest.mark.parametrize(("farms", "groups"), [(9, 10), (16, 16)])
+def test_a_candidate_whose_sources_belong_elsewhere_is_in_no_group(farms, groups) -> None:
+    """Two boosters of its own, and one of each of so many farms, to which that means more."""
+    edges = [*fan([1, 2], 0)]
+    for i in range(farms):
+        target, boosters = 3 + 5 * i, range(4 + 5 * i, 8 + 5 * i)
+        edges += [*fan(boosters, target), (boosters[0], 0)]
+    candidates = [0, *range(3, 3 + 5 * farms, 5)]
+    strong, _ = strong_of(83, edges, candidates)
+    assert np.count_nonzero(strong.target == 0) == farms + 2
+    found = groups_of(83, edges, candidates)
+    # 1.7 of 1.7 + 9/2·0.85 is 0.31, of 1.7 + 16/2·0.85 it is 0.2.
+    assert len(found) == groups
+    assert [group.candidates for group in found if 0 not in group.candidates] == [[x] for x in candidates[1:]]
