@@ -221,9 +221,8 @@ class _Leading:
         self._kept: list[Sources] = []
 
     def add(self, sources: Sources) -> None:
-        """Keeps the leading ones of a range of targets of its own."""
-        order, place = by_contribution(sources)
-        kept = order[place < self._listed]
+        """Keeps the leading ones of a range of targets of its own; sorted by target, then source."""
+        kept = leading_ones(sources["target"], sources["contribution"], self._listed)
         self._kept.append({name: values[kept] for name, values in sources.items() if values.ndim == 1})
 
     def write(self) -> None:
@@ -242,6 +241,26 @@ class _Leading:
                 pq.write_table(table.slice(low, high - low), sink, compression="zstd")
                 place = gathering.folder.leading(self._kind, group, self._stripe)
                 place.write_bytes(sink.getvalue())
+
+
+def leading_ones(
+    target: NDArray[np.integer], contribution: NDArray[np.float64], most: int
+) -> NDArray[np.int64]:
+    """Places of each target's ``most`` largest contributions, rising; of equal ones the first.
+
+    ``target`` is sorted.  Selected, not sorted: targets have up to millions of sources.
+    """
+    starts = np.flatnonzero(np.diff(target, prepend=np.int64(-1)))
+    counts = np.diff(starts, append=len(target))
+    is_leading = np.ones(len(target), dtype=np.bool_)
+    many = counts > most
+    for start, count in zip(starts[many].tolist(), counts[many].tolist(), strict=True):
+        values = contribution[start : start + count]
+        least = np.partition(values, count - most)[count - most]
+        chosen = values > least
+        chosen[np.flatnonzero(values == least)[: most - int(np.count_nonzero(chosen))]] = True
+        is_leading[start : start + count] = chosen
+    return np.flatnonzero(is_leading)
 
 
 def by_contribution(sources: Sources) -> tuple[NDArray[np.int64], NDArray[np.int64]]:
