@@ -1,9 +1,9 @@
 """What a group of candidates and their sources looks like: one word for how it is linked.
 
-A *final* candidate hands nothing on: it is no strong source of a clearly higher candidate of the group, one of
-1.2 times its score: what hands all on to the next one and has it back is 1/c = 1.18 times lower, and final.
-The one of the highest score always is.  With amounts (scaled
-contributions) added up over all strong links inside the group, the first rule that holds:
+A *final* candidate hands nothing on: it is no strong source of a clearly higher candidate of the group, one
+of 1.2 times its score.  What hands all that it has on and gets it back is 1/c = 1.18 times lower: final.  The
+candidate of the highest score always is.  With amounts (scaled contributions) added up over all strong links
+inside the group, the first rule that holds:
 
 1. ring: a mean of closeness - T of 0.15 or more over boosters of one candidate alone: they link to one
    another, and so lead to it on longer ways, too.  A ring closed one by one has 0.37 of it, a star nothing.
