@@ -11,7 +11,10 @@ from pathlib import Path
 sys.path.insert(0, str(Path(__file__).resolve().parent.parent))
 
 from sparkrank.config import describe_config
+from sparkrank.config.sections import settings_of
 from sparkrank.graph.rejected import BAD_LINKS
+from sparkrank.kernels.farms import core_member_start
+from sparkrank.kernels.floor import SHAPES, DetectionFloor, detection_floor
 from sparkrank.names.canonical import REASONS
 from sparkrank.names.lists import LIST_REASONS
 from sparkrank.propagate.members import NOT_IN_GRAPH
@@ -21,6 +24,8 @@ from sparkrank.tables import reference_markdown
 README = Path(__file__).resolve().parent.parent / "README.md"
 NAMES = "every name"
 LISTS = "`core.host`, `known_spam.host`"
+FLOOR_GRAPHS = ((80_000, 1_000), (335_000_000, 5_000))
+"""Hosts and core members for which the detection floor is shown: a small graph, and a thin core."""
 
 
 def parts() -> dict[str, str]:
@@ -30,6 +35,7 @@ def parts() -> dict[str, str]:
         "tables": reference_markdown().strip(),
         "reasons": rejection_table(),
         "statuses": status_table(),
+        "floor": floor_table(),
     }
 
 
@@ -47,6 +53,31 @@ def status_table() -> str:
     """Every exit status with its name in the outcome file."""
     lines = [f"| {code} | {text} |" for code, text in STATUS_NAMES.items()]
     return "\n".join(["| status | meaning |", "|---|---|", *lines])
+
+
+def floor_table() -> str:
+    """Boosters of the smallest farm that the default thresholds list, by shape."""
+    floors = [(n, core, default_floor(n, core)) for n, core in FLOOR_GRAPHS]
+    heads = ["no core link", *(f"one, {n:,} hosts, {core:,} core members" for n, core, _ in floors)]
+    lines = [f"| shape | how boosters link | {' | '.join(heads)} |", f"|---|---|{'---:|' * len(heads)}"]
+    for name, shape in SHAPES.items():
+        found = [floor.shapes[name] for *_, floor in floors]
+        sizes = [found[0].boosters, *(one.boosters_with_core_link for one in found)]
+        shown = ["none" if size is None else f"{size:,}" for size in sizes]
+        lines.append(f"| {name} | {shape.meaning} | {' | '.join(shown)} |")
+    return "\n".join(lines)
+
+
+def default_floor(n_hosts: int, n_core: int) -> DetectionFloor:
+    """The detection floor of a graph and a core at the default settings."""
+    sections = ("solve", "mass", "candidates")
+    defaults = {key: default for section in sections for key, (_, default) in settings_of(section).items()}
+    return detection_floor(
+        min_scaled_pagerank=defaults["min_scaled_pagerank"],
+        min_relative_mass=defaults["min_relative_mass"],
+        damping=defaults["damping"],
+        core_start=core_member_start(defaults["good_share"], n_hosts, n_core),
+    )
 
 
 def with_parts(readme: str) -> str:

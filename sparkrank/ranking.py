@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import dataclasses
 import logging
 from typing import TYPE_CHECKING
 
@@ -10,6 +11,7 @@ from numpy.typing import NDArray
 
 from sparkrank.config import Candidates, Config
 from sparkrank.entry import JobContext
+from sparkrank.evidence.attributes import gather_attributes
 from sparkrank.evidence.candidates import spam_candidates
 from sparkrank.evidence.cautions import CoreStrength, core_strength
 from sparkrank.evidence.support import SupportFiles, gather_support
@@ -67,7 +69,7 @@ def gather(
     name: str,
 ) -> SupportFiles:
     """The support of the wanted hosts (see ``gather_support``), in a folder of this name."""
-    return gather_support(
+    found = gather_support(
         context.spark,
         build(context, inputs),
         resolve(context.config.run.work).child("evidence", name),
@@ -78,6 +80,11 @@ def gather(
         damping=context.config.solve.damping,
         good_share=context.config.mass.good_share,
     )
+    rules = inputs.rules if context.config.graph.node == "domain" else None
+    listed = [*found.measures, *found.support]
+    place = found.folder.attributes()
+    attributes = gather_attributes(context.spark, inputs.hosts, rules, listed, place)
+    return dataclasses.replace(found, attributes=attributes)
 
 
 def scores_frame(context: JobContext, scored: StepRecord) -> DataFrame:

@@ -19,6 +19,7 @@ from sparkrank.entry import JobContext
 from sparkrank.errors import InputRefused
 from sparkrank.graph.build import Graph, build_graph
 from sparkrank.inputs import InputFacts, check_edges, check_hosts
+from sparkrank.kernels.floor import detection_floor
 from sparkrank.names.lists import HostLists, read_lists
 from sparkrank.names.suffixes import SuffixRules, SuffixSections
 from sparkrank.places import resolve
@@ -166,6 +167,12 @@ def conclude(context: JobContext, inputs: RunInputs, scored: StepRecord, ranked:
     core = inputs.lists.core
     core_strength_facts = dict(ranked.facts)
     evidence = core_strength_facts.pop("evidence")
+    floor = detection_floor(
+        min_scaled_pagerank=context.config.candidates.min_scaled_pagerank,
+        min_relative_mass=context.config.candidates.min_relative_mass,
+        damping=context.config.solve.damping,
+        core_start=core_strength_facts["core_start"],
+    )
     manifest = Manifest(
         run_id=context.run.run_id,
         attempt=context.run.attempt_id,
@@ -184,6 +191,7 @@ def conclude(context: JobContext, inputs: RunInputs, scored: StepRecord, ranked:
             "graph": scored.facts["graph"],
             "core": {**scored.facts["core"], **core_strength_facts},
             "evidence": evidence,
+            "detection_floor": floor.as_dict(),
             "columns": scored.facts["columns"],
         },
     )

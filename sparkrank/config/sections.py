@@ -65,7 +65,7 @@ class Input:
     )
     hosts: str = setting(
         Kind.PATH,
-        "Parquet with a host column that adds hosts without edges; empty for none.",
+        "Parquet with a host column: adds hosts without edges; other columns are evidence. Empty for none.",
         default="",
         reason="the list is optional; hosts without edges change every share of the whole",
     )

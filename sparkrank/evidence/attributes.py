@@ -70,6 +70,10 @@ class AttributeFiles:
         return rows.join(known, host, "left")
 
 
+NO_ATTRIBUTES = AttributeFiles(places=())
+"""Where the hosts input says nothing of any of them."""
+
+
 def gather_attributes(
     spark: SparkSession,
     hosts: InputFacts | None,
@@ -83,7 +87,7 @@ def gather_attributes(
     (a row then counts for its domain).  Work files go below ``place``.
     """
     if hosts is None or not hosts.attributes or not wanted:
-        return AttributeFiles(places=())
+        return NO_ATTRIBUTES
     pieces = plan_pieces(hosts, ("host", *hosts.attributes))
     with TaskRunner(spark, 1) as one:
         (n_wanted,) = one.run(WantedTask(place, tuple(wanted)), "attributes: hosts")
@@ -94,7 +98,7 @@ def gather_attributes(
     by_part = [[piece for piece, there in enumerate(found) if part in there] for part in range(parts)]
     filled = [(part, pieces_of) for part, pieces_of in enumerate(by_part) if pieces_of]
     if not filled:
-        return AttributeFiles(places=())
+        return NO_ATTRIBUTES
     with TaskRunner(spark, len(filled)) as part_tasks:
         part_tasks.run(ObjectsTask(place, filled, hosts.attributes), "attributes: one text a host")
     return AttributeFiles(places=tuple(_objects(place, part) for part, _ in filled))

@@ -57,6 +57,10 @@ class EvidenceFolder:
         """The stripe's leading sources of a group's targets, as Parquet."""
         return self.place.child("leading", kind, f"{group:05d}-{stripe:03d}.parquet")
 
+    def attributes(self) -> Place:
+        """The folder of what the hosts input says of targets and listed sources."""
+        return self.place.child("attributes")
+
     def support(self, group: int) -> Place:
         """Rows of `candidate_support` for a group of targets, as Parquet."""
         return self.place.child("support", f"{group:05d}.parquet")

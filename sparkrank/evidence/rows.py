@@ -88,7 +88,7 @@ class GroupRows:
         low, _ = self.groups[group]
         rows = self._leading(kind, group)
         if not rows:
-            return arrow_schema(CANDIDATE_SUPPORT).empty_table(), 1.0 - 1.0 / score
+            return support_schema().empty_table(), 1.0 - 1.0 / score
         order, place = by_contribution(rows)
         rows = {name: values[order] for name, values in rows.items()}
         target = rows["target"].astype(np.int64) - low
@@ -147,7 +147,7 @@ class GroupRows:
             "same_domain": pa.array(rows["domain"] == domains[target]),
             "source_is_candidate": pa.array(rows["is_target"]),
         }
-        schema = arrow_schema(CANDIDATE_SUPPORT)
+        schema = support_schema()
         for name in SOURCE_COLUMNS:
             if name == "core_distance":
                 steps = rows["core_steps"].astype(np.int32)
@@ -164,6 +164,12 @@ def _texts(marks: NDArray[np.bool_], texts: tuple[str, ...]) -> pa.Array:
     offsets = np.searchsorted(row, np.arange(len(marks) + 1))
     chosen = pa.array(texts, pa.string()).take(pa.array(text))
     return pa.ListArray.from_arrays(pa.array(offsets, pa.int32()), chosen)
+
+
+def support_schema() -> Any:
+    """Of the rows of ``candidate_support`` in work files: attributes come later."""
+    schema = arrow_schema(CANDIDATE_SUPPORT)
+    return schema.remove(schema.get_field_index("source_attributes"))
 
 
 def _sum_before(values: NDArray[np.float64], place: NDArray[np.int64]) -> NDArray[np.float64]:

@@ -22,9 +22,10 @@ from numpy.typing import NDArray
 
 from sparkrank.arrays import write_arrays
 from sparkrank.config import Candidates, Evidence
+from sparkrank.evidence.attributes import NO_ATTRIBUTES, AttributeFiles
 from sparkrank.evidence.folder import EvidenceFolder
 from sparkrank.evidence.paths import FollowRest, FollowStep, Gathering, target_ranges
-from sparkrank.evidence.rows import GroupRows
+from sparkrank.evidence.rows import GroupRows, support_schema
 from sparkrank.evidence.sources import DIRECT, ORIGIN, DirectSources, OriginSources
 from sparkrank.evidence.values import LayValues, ScanScores
 from sparkrank.graph.build import Graph
@@ -32,7 +33,7 @@ from sparkrank.kernels.xxhash import xxh64
 from sparkrank.names.lists import HostList
 from sparkrank.names.octets import octets_of
 from sparkrank.places import Place
-from sparkrank.tables import CANDIDATE_SUPPORT, SPAM_CANDIDATES, arrow_schema, spark_schema
+from sparkrank.tables import CANDIDATE_SUPPORT, SPAM_CANDIDATES, spark_schema
 from sparkrank.tables.measures import MEASURES
 from sparkrank.tasks import TaskRunner
 
@@ -63,6 +64,7 @@ class SupportFiles:
     links: int
     rows: int
     least_share_a_link: float
+    attributes: AttributeFiles = NO_ATTRIBUTES
 
     @property
     def support(self) -> list[Place]:
@@ -74,17 +76,22 @@ class SupportFiles:
 
     def support_frame(self, spark: SparkSession) -> DataFrame:
         """Rows of ``candidate_support``."""
-        return _frame(spark, self.support, spark_schema(CANDIDATE_SUPPORT))
+        from pyspark.sql.types import StructType
+
+        declared = spark_schema(CANDIDATE_SUPPORT).fields
+        laid = StructType([field for field in declared if field.name != "source_attributes"])
+        return self.attributes.joined(_frame(spark, self.support, laid), "source", "source_attributes")
 
     def support_table(self) -> pa.Table:
         """The same rows here; for few."""
-        schema = arrow_schema(CANDIDATE_SUPPORT)
+        schema = support_schema()
         parts = [pq.read_table(place.path, filesystem=place.filesystem) for place in self.support]
-        return pa.concat_tables([schema.empty_table(), *(part.cast(schema) for part in parts)])
+        rows = pa.concat_tables([schema.empty_table(), *(part.cast(schema) for part in parts)])
+        return self.attributes.added(rows, "source", "source_attributes")
 
     def measures_frame(self, spark: SparkSession) -> DataFrame:
         """The evidence columns of ``spam_candidates``, with the host."""
-        return _frame(spark, self.measures, measures_schema())
+        return self.attributes.joined(_frame(spark, self.measures, measures_schema()), "host", "attributes")
 
     def facts(self) -> dict[str, Any]:
         """What the manifest says of the evidence."""

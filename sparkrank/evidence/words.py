@@ -20,6 +20,8 @@ def explanation(host: Row, support: Iterable[Row], thresholds: Candidates) -> st
     lines = [shown_value(host["host"]), f"  {_standing(host, thresholds)}", *_scores(host), *_sources(host)]
     lines += [f"  why: {text}" for text in host["reasons"]]
     lines += [f"  but: {text}" for text in host["cautions"]]
+    if host["attributes"] is not None:
+        lines.append(f"  the hosts input says: {shown_value(host['attributes'])}")
     rows = list(support)
     for kind, title in (
         ("direct", "hosts that link here, by what their links bring"),

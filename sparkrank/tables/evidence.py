@@ -6,6 +6,17 @@ from sparkrank.tables.columns import DEGREE_COLUMNS, HOST, LEAD, NAME_COLUMNS, S
 from sparkrank.tables.measures import SUPPORT_MEASURES
 from sparkrank.tables.spec import ColumnSpec, ColumnType, TableSpec
 
+_ATTRIBUTES = ColumnSpec(
+    name="attributes",
+    type=ColumnType.STRING,
+    unit="JSON",
+    nullable=True,
+    meaning="What the hosts input says of the host beside its name: one JSON object, keys in order; a list "
+    "where rows differ. Null where it says nothing. Texts are cut at 200 characters, control characters "
+    "escaped.",
+    caution="No score knows of it. Foreign text: do not open it as a link or a formula.",
+)
+
 SPAM_CANDIDATES = TableSpec(
     name="spam_candidates",
     meaning="Hosts to review, in order of priority: those that pass both thresholds, core members excluded. "
@@ -46,6 +57,7 @@ SPAM_CANDIDATES = TableSpec(
             meaning="Reasons to doubt this row's scores, in words; empty where none is known.",
             caution="Read them before the scores.",
         ),
+        _ATTRIBUTES,
     ),
 )
 
@@ -158,6 +170,7 @@ CANDIDATE_SUPPORT = TableSpec(
             caution=LEAD,
         ),
         *(_of_source(name) for name in SOURCE_COLUMNS),
+        dataclasses.replace(_ATTRIBUTES, name="source_attributes"),
     ),
 )
 

@@ -1,5 +1,7 @@
 """What a run leaves: tables by the manifest, counts, and what the manifest says of graph and core."""
 
+import math
+
 import networkx
 import numpy as np
 import pyarrow.parquet as pq
@@ -115,6 +117,13 @@ def test_the_manifest_tells_how_strong_the_core_is(finished) -> None:
     assert core["core_start"] == pytest.approx(start, rel=1e-12)
     hidden = (0.85 * start / (10 * (1 - 0.5)) - 1) / 0.85
     assert core["boosters_hidden_by_core_link"] == pytest.approx(hidden, rel=1e-12)
+    floor = manifest["detection_floor"]
+    assert (floor["core_start"], floor["min_scaled_pagerank"]) == (core["core_start"], 10.0)
+    # Smallest farms of a scaled PageRank of 10, by hand: 1 + ck, and (1 + ck)/(1 - c²) with back-links.
+    assert floor["shapes"]["star"]["boosters"] == 11
+    assert floor["shapes"]["star with back-links"]["boosters"] == 3
+    # The member's own PageRank, of which 1/d arrives, does a tenth of a booster's work.
+    assert floor["shapes"]["star with back-links"]["boosters_with_core_link"] == math.ceil(hidden - 0.1)
     assert [column["name"] for column in manifest["columns"]] == [
         "pagerank",
         "trust: north",

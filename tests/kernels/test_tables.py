@@ -79,6 +79,7 @@ AGREED = {
         *MEASURED,
         ("reasons", "array<string>", False),
         ("cautions", "array<string>", False),
+        ("attributes", "string", True),
     ],
     "candidate_support": [
         ("host", "string", False),
@@ -101,6 +102,7 @@ AGREED = {
         ("source_out_degree", "long", False),
         ("source_is_core", "boolean", False),
         ("source_core_distance", "int", True),
+        ("source_attributes", "string", True),
     ],
     "rejected_rows": [
         ("source", "string", False),

@@ -8,6 +8,7 @@ import pyarrow.parquet as pq
 import pytest
 
 from sparkrank.config import Candidates
+from sparkrank.evidence.attributes import NO_ATTRIBUTES
 from sparkrank.evidence.candidates import OVER_THRESHOLDS, spam_candidates
 from sparkrank.evidence.cautions import (
     BARE_SUFFIX,
@@ -82,7 +83,7 @@ def measures(spark, rows: list[dict[str, Any]]):
     values = {"double": 0.25, "bigint": 4}
     rest = [values[field.dataType.simpleString()] for field in schema.fields[2:-2]]
     given = [(row["host"], row["priority"], *rest, row["reasons"], row["look_alikes"]) for row in rows]
-    return spark.createDataFrame(given, schema)
+    return NO_ATTRIBUTES.joined(spark.createDataFrame(given, schema), "host", "attributes")
 
 
 @pytest.fixture
