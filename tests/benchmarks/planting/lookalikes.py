@@ -138,6 +138,13 @@ def tiered_association(web: PlantedWeb) -> None:
     _lively(web, members, out=0.4, known=0.0)
 
 
+def unreached_part(web: PlantedWeb) -> None:
+    """A copy of a part of the base, by domains: honest links as they are, out of the core's reach."""
+    chosen = web.random.random(int(web.base.domains.max()) + 1) < web.random.uniform(0.3, 0.6)
+    hosts = web.share(web.copied(chosen[web.base.domains], "unreached_part"), 0.2)
+    web.link(hosts, web.popular(len(hosts)))
+
+
 LOOKALIKES: dict[str, Callable[[PlantedWeb], None]] = {
     shape.__name__: shape
     for shape in (

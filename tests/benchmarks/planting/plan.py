@@ -6,7 +6,7 @@ from collections.abc import Sequence
 import numpy as np
 
 from planting.farms import FARMS
-from planting.lookalikes import LOOKALIKES
+from planting.lookalikes import LOOKALIKES, unreached_part
 from planting.web import BaseGraph, Finished, PlantedWeb
 
 # Kept out of the choosing of the order; only the last judgement plants them.
@@ -17,12 +17,20 @@ _COMMUNITIES = (3, 8)
 
 
 def plant(
-    base: BaseGraph, seed: int, *, farms: Sequence[str], lookalikes: Sequence[str], each: int, hard: bool
+    base: BaseGraph,
+    seed: int,
+    *,
+    farms: Sequence[str],
+    lookalikes: Sequence[str],
+    each: int,
+    hard: bool,
+    unreached_parts: int = 0,
 ) -> Finished:
     """`each` farms a shape and about as many look-alikes a kind, in a base whose core is thinned by chance.
 
     On a hard web the sources of look-alikes may be as unknown as boosters are, and boosters link to more
-    decoys: some honest stars are farms then, as far as links go.
+    decoys: some honest stars are farms then, as far as links go. `unreached_parts` copies of parts of the
+    base are out of the core's reach: all their hosts have the relative mass of a farm without a feed.
     """
     random = np.random.Generator(np.random.PCG64([seed, 7]))
     web = PlantedWeb(_thinned(base, random), random, hard=hard)
@@ -33,6 +41,8 @@ def plant(
         low, high = _COMMUNITIES if name in ("community", "tiered_association") else (each // 2, each)
         for _ in range(int(random.integers(low, high + 1))):
             LOOKALIKES[name](web)
+    for _ in range(unreached_parts):
+        unreached_part(web)
     return web.finished()
 
 

@@ -73,6 +73,20 @@ class PlantedWeb:
         self._shapes.append(np.full(count, self._shape(shape)))
         return new
 
+    def copied(self, chosen: BoolArray, shape: str) -> IntArray:
+        """Once more the hosts of the base for which `chosen` (n_hosts of the base,) holds and that link among
+        each other, with those links, as domains of a new suffix: nobody else links to them."""
+        inside = chosen[self.base.sources] & chosen[self.base.destinations]
+        ends = np.concatenate([self.base.sources[inside], self.base.destinations[inside]])
+        originals, place = np.unique(ends, return_inverse=True)
+        new = self.hosts(len(originals), shape, suffix=self.new_suffix())
+        domains, number = np.unique(self.base.domains[originals], return_inverse=True)
+        self._domains[-1] = self._next_domain + number
+        self._next_domain += len(domains) + 1
+        count = int(inside.sum())
+        self.link(new[place[:count]], new[place[count:]])
+        return new
+
     def domain_of(self, host: int) -> int:
         return int(np.concatenate(self._domains)[host])
 
