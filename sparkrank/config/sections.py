@@ -211,7 +211,7 @@ class Evidence:
     all_followed_links: int = setting(
         Kind.INTEGER,
         "Links followed back in a step for all candidates together, about; each gets an even part.",
-        default=1 << 22,
+        default=1 << 24,
         reason="keeps the evidence of a long list cheaper than the solve; some seconds of a core a step",
         expected="a whole number of at least 1",
         accepts=lambda v: v >= 1,

@@ -71,7 +71,7 @@ def test_defaults_are_the_documented_ones(tmp_path: Path) -> None:
         "candidates": {"min_scaled_pagerank": 10.0, "min_relative_mass": 0.5},
         "evidence": {
             "followed_links": 10_000,
-            "all_followed_links": 4_194_304,
+            "all_followed_links": 16_777_216,
             "max_steps": 20,
             "listed_sources": 100,
         },
