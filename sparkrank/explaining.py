@@ -14,7 +14,7 @@ from numpy.typing import NDArray
 from sparkrank.arrays import read_arrays
 from sparkrank.entry import JobContext
 from sparkrank.errors import ConfigError, InputRefused
-from sparkrank.evidence.candidates import with_evidence
+from sparkrank.evidence.candidates import rows_of
 from sparkrank.evidence.words import explanation
 from sparkrank.graph.build import Graph
 from sparkrank.kernels.lookup import find_ids
@@ -25,7 +25,7 @@ from sparkrank.publish.by_driver import publish_rows
 from sparkrank.publish.clean import remove_unnamed
 from sparkrank.publish.entries import TableEntry
 from sparkrank.publish.manifest import Manifest, check_run, write_manifest
-from sparkrank.ranking import gather, scores_frame, strength_of_core
+from sparkrank.ranking import candidate_files, gather, strength_of_core
 from sparkrank.shown import shown_value
 from sparkrank.stages import RunInputs, build, scored_before
 from sparkrank.tables import EXPLAINED_HOSTS, EXPLAINED_SUPPORT, TableSpec, arrow_schema
@@ -91,19 +91,12 @@ def _published(context: JobContext, entry: TableEntry, table: TableSpec, hosts: 
 
 def _gathered(context: JobContext, inputs: RunInputs, hosts: list[str]) -> tuple[pa.Table, pa.Table]:
     """Rows and support of hosts that the run does not list."""
-    from pyspark.sql import functions as sf
-
     scored = scored_before(context, inputs)
     ids = _known_ids(build(context, inputs), hosts)
     found = gather(context, inputs, scored, ids, f"{context.run.run_id}-{context.run.attempt_id}")
-    scores = scores_frame(context, scored)
-    rows = with_evidence(
-        scores.where(sf.col("host").isin(hosts)),
-        scores,
-        found.measures_frame(context.spark),
-        strength_of_core(context.config, scored),
-        context.config.candidates,
-    ).toArrow()
+    strength = strength_of_core(context.config, scored)
+    rows = rows_of(candidate_files(context, scored, found, tuple(hosts), strength))
+    rows = found.attributes.added(rows, "host", "attributes")
     rows = rows.append_column("rank", pa.nulls(rows.num_rows, pa.int32()))
     support = found.support_table()
     found.folder.place.delete_tree()

@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import dataclasses
 import logging
-from typing import TYPE_CHECKING
 
 import numpy as np
 from numpy.typing import NDArray
@@ -12,7 +11,7 @@ from numpy.typing import NDArray
 from sparkrank.config import Candidates, Config
 from sparkrank.entry import JobContext
 from sparkrank.evidence.attributes import gather_attributes
-from sparkrank.evidence.candidates import spam_candidates
+from sparkrank.evidence.candidates import ranked, ranked_frame, rows_of, write_rows
 from sparkrank.evidence.cautions import CoreStrength, core_strength
 from sparkrank.evidence.support import SupportFiles, gather_support
 from sparkrank.places import Place, resolve
@@ -21,10 +20,7 @@ from sparkrank.publish.entries import TableEntry
 from sparkrank.publish.records import StepRecord, adopt, commit_step
 from sparkrank.publish.write import publish_table
 from sparkrank.stages import RunInputs, build
-from sparkrank.tables import CANDIDATE_SUPPORT, SPAM_CANDIDATES, TableSpec
-
-if TYPE_CHECKING:
-    from pyspark.sql import DataFrame
+from sparkrank.tables import CANDIDATE_SUPPORT, SPAM_CANDIDATES
 
 log = logging.getLogger(__name__)
 
@@ -37,14 +33,10 @@ def rank(context: JobContext, inputs: RunInputs, scored: StepRecord) -> StepReco
         return record
     strength = strength_of_core(context.config, scored)
     found = gather(context, inputs, scored, context.config.candidates, fingerprint[:24])
-    measures = found.measures_frame(context.spark)
-    rows = scores_frame(context, scored)
-    candidates = spam_candidates(rows, measures, context.config.candidates, strength)
     tables = {
-        "spam_candidates": publish_table(candidates, SPAM_CANDIDATES, context.run),
-        "candidate_support": publish_support(context, found, CANDIDATE_SUPPORT),
+        "spam_candidates": _publish_candidates(context, scored, found, strength),
+        "candidate_support": _publish_support(context, found),
     }
-    candidates.sparkSession.catalog.clearCache()
     record = StepRecord(
         step="rank_candidates",
         fingerprint=fingerprint,
@@ -87,16 +79,45 @@ def gather(
     return dataclasses.replace(found, attributes=attributes)
 
 
-def scores_frame(context: JobContext, scored: StepRecord) -> DataFrame:
-    """The rows of ``host_scores``."""
-    return context.spark.read.parquet(*(place.uri for place in _score_files(context, scored)))
+def candidate_files(
+    context: JobContext,
+    scored: StepRecord,
+    found: SupportFiles,
+    wanted: Candidates | tuple[str, ...],
+    strength: CoreStrength,
+) -> list[Place]:
+    """Files of rows of ``spam_candidates``, without ranks; the support of the wanted hosts was gathered."""
+    return write_rows(
+        context.spark,
+        found.folder,
+        _score_files(context, scored),
+        found.measures,
+        wanted,
+        strength,
+        context.config.candidates,
+    )
 
 
-def publish_support(context: JobContext, found: SupportFiles, table: TableSpec) -> TableEntry:
+def _publish_candidates(
+    context: JobContext, scored: StepRecord, found: SupportFiles, strength: CoreStrength
+) -> TableEntry:
+    """Publishes the candidates: from the driver where they are few."""
+    files = candidate_files(context, scored, found, context.config.candidates, strength)
+    if found.targets <= MOST_ROWS:
+        rows = found.attributes.added(rows_of(files), "host", "attributes")
+        return publish_rows(ranked(rows), SPAM_CANDIDATES, context.run)
+    read = context.spark.read.parquet(*(place.uri for place in files))
+    rows = ranked_frame(found.attributes.joined(read, "host", "attributes"))
+    entry = publish_table(rows, SPAM_CANDIDATES, context.run)
+    context.spark.catalog.clearCache()
+    return entry
+
+
+def _publish_support(context: JobContext, found: SupportFiles) -> TableEntry:
     """Publishes the rows of support: from the driver where they are few."""
     if found.rows <= MOST_ROWS:
-        return publish_rows(found.support_table(), table, context.run)
-    return publish_table(found.support_frame(context.spark), table, context.run)
+        return publish_rows(found.support_table(), CANDIDATE_SUPPORT, context.run)
+    return publish_table(found.support_frame(context.spark), CANDIDATE_SUPPORT, context.run)
 
 
 def _score_files(context: JobContext, scored: StepRecord) -> list[Place]:

@@ -13,24 +13,30 @@ import time
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any, cast
 
+import pyarrow as pa
+import pyarrow.parquet as pq
+
 from sparkrank import __version__
 from sparkrank.config import Config
 from sparkrank.entry import JobContext
 from sparkrank.errors import InputRefused
 from sparkrank.graph.build import Graph, build_graph
+from sparkrank.graph.rejected import added_up
 from sparkrank.inputs import InputFacts, check_edges, check_hosts
 from sparkrank.kernels.floor import detection_floor
 from sparkrank.names.lists import HostLists, read_lists
 from sparkrank.names.suffixes import SuffixRules, SuffixSections
-from sparkrank.places import resolve
+from sparkrank.places import Place, resolve
 from sparkrank.propagate.solve import SolvedHosts, solve_hosts
+from sparkrank.publish.by_driver import MOST_ROWS, publish_rows
 from sparkrank.publish.by_tasks import publish_parts
 from sparkrank.publish.clean import remove_unnamed
+from sparkrank.publish.entries import TableEntry
 from sparkrank.publish.manifest import Manifest, check_run, write_manifest
 from sparkrank.publish.records import StepRecord, adopt, commit_step, missing_file
 from sparkrank.publish.write import publish_table
 from sparkrank.scores.host_scores import host_scores
-from sparkrank.tables import HOST_SCORES, REJECTED_ROWS
+from sparkrank.tables import HOST_SCORES, REJECTED_ROWS, arrow_schema
 
 if TYPE_CHECKING:
     from pyspark.sql import DataFrame
@@ -139,7 +145,7 @@ def score(context: JobContext, inputs: RunInputs) -> StepRecord:
     scores = host_scores(context.spark, solved.solution, solved.sweeps, inputs.rules)
     tables = {
         "host_scores": publish_parts(context.spark, scores, HOST_SCORES, context.run),
-        "rejected_rows": publish_table(_rejected(context, graph, inputs, solved), REJECTED_ROWS, context.run),
+        "rejected_rows": _publish_rejected(context, graph, inputs, solved),
     }
     log.info("scores: %.1f s", time.monotonic() - started)
     facts = {"graph": graph.counts, "core": solved.core_facts(), "columns": solved.column_facts()}
@@ -209,18 +215,29 @@ def _facts(facts: InputFacts | None) -> dict[str, Any] | None:
     return None if facts is None else {"fingerprint": facts.fingerprint, "rows": facts.rows}
 
 
-def _rejected(context: JobContext, graph: Graph, inputs: RunInputs, solved: SolvedHosts) -> DataFrame:
-    """Rejected values of the tables and of the lists."""
-    from pyspark.sql import functions as sf
-
-    from sparkrank.tables import spark_schema
-
+def _publish_rejected(
+    context: JobContext, graph: Graph, inputs: RunInputs, solved: SolvedHosts
+) -> TableEntry:
+    """Rejected values of the tables and of the lists: from the driver unless they are very many."""
     lists = [inputs.lists.core, *filter(None, [inputs.lists.known_spam])]
     rejections = [r for one in lists for r in one.rejections] + list(solved.members.unmatched)
-    rows = [(r.source, r.row_value, r.reason, r.rows) for r in rejections]
-    found = context.spark.createDataFrame(rows, spark_schema(REJECTED_ROWS))
-    if graph.rejected_pieces:
-        paths = [graph.folder.rejected(piece).uri for piece in graph.rejected_pieces]
-        found = found.union(context.spark.read.parquet(*paths).select(*found.columns))
+    schema = arrow_schema(REJECTED_ROWS)
+    rows = [{name: getattr(one, name) for name in schema.names} for one in rejections]
+    listed = pa.Table.from_pylist(rows, schema)
+    places = [graph.folder.rejected(piece) for piece in graph.rejected_pieces]
+    in_pieces = sum(pq.read_metadata(place.path, filesystem=place.filesystem).num_rows for place in places)
+    if listed.num_rows + in_pieces <= MOST_ROWS:
+        parts = [pq.read_table(place.path, filesystem=place.filesystem) for place in places]
+        return publish_rows(
+            added_up([listed, *(part.cast(schema) for part in parts)]), REJECTED_ROWS, context.run
+        )
+    return publish_table(_many_rejected(context, listed, places), REJECTED_ROWS, context.run)
+
+
+def _many_rejected(context: JobContext, listed: pa.Table, places: list[Place]) -> DataFrame:
+    from pyspark.sql import functions as sf
+
+    found = context.spark.createDataFrame(listed)
+    found = found.union(context.spark.read.parquet(*(place.uri for place in places)).select(*found.columns))
     # The same value may have been met in several pieces.
     return found.groupBy("source", "row_value", "reason").agg(sf.sum("rows").alias("rows"))

@@ -5,13 +5,15 @@ The texts are fixed, without numbers, so that they can be filtered by; each is w
 
 from __future__ import annotations
 
+from collections.abc import Iterable, Mapping, Set
 from dataclasses import dataclass
-from typing import TYPE_CHECKING
+from typing import NamedTuple
+
+import numpy as np
+import pyarrow as pa
+import pyarrow.compute as pc
 
 from sparkrank.kernels.farms import boosters_hidden_by_core_link, core_member_start
-
-if TYPE_CHECKING:
-    from pyspark.sql import Column, DataFrame
 
 NOT_REACHED = "no path leads here from the good core: unknown, not spam"
 ONE_SLICE = "leaving one slice out of the good core would take this host below the threshold"
@@ -63,33 +65,56 @@ def core_strength(
     return CoreStrength(start=start, hidden_boosters=hidden, slices=slices)
 
 
-def bare_suffixes(scores: DataFrame) -> DataFrame:
-    """Public suffixes (column ``bare_suffix``) with next to no core members: less than a tenth of what
-    an even spread of the core over all hosts would give, or none."""
-    from pyspark.sql import functions as sf
+class SuffixMembers(NamedTuple):
+    """Hosts of a public suffix, and how many of them are core members."""
 
-    by_suffix = scores.groupBy("suffix").agg(
-        sf.count(sf.lit(1)).alias("hosts"), sf.sum(sf.col("is_core").cast("long")).alias("members")
-    )
-    total = by_suffix.agg(sf.sum("hosts").alias("all_hosts"), sf.sum("members").alias("all_members"))
-    even = sf.col("all_members") * sf.col("hosts") / sf.col("all_hosts")
-    bare = (sf.col("members") == 0) | (sf.col("members") < _EVEN_SHARE * even)
-    return by_suffix.crossJoin(sf.broadcast(total)).where(bare).select(sf.col("suffix").alias("bare_suffix"))
+    hosts: int
+    members: int
 
 
-def caution_column(strength: CoreStrength, min_relative_mass: float) -> Column:
-    """Cautions of a candidate; needs its scores, its measures with what honest thing its shape may be
-    (``look_alikes``), and the boolean ``is_bare_suffix``."""
-    from pyspark.sql import functions as sf
+def bare_suffixes(counts: Iterable[Mapping[str | None, SuffixMembers]]) -> set[str | None]:
+    """Public suffixes with next to no core members: less than a tenth of what an even spread of the core
+    over all hosts would give, or none.  ``counts`` are those of parts of the graph."""
+    found: dict[str | None, SuffixMembers] = {}
+    for part in counts:
+        for suffix, count in part.items():
+            before = found.get(suffix, SuffixMembers(0, 0))
+            found[suffix] = SuffixMembers(before.hosts + count.hosts, before.members + count.members)
+    hosts = sum(count.hosts for count in found.values())
+    members = sum(count.members for count in found.values())
+    return {
+        suffix
+        for suffix, count in found.items()
+        if count.members == 0 or count.members < _EVEN_SHARE * (members * count.hosts / hosts)
+    }
 
+
+def caution_lists(
+    columns: Mapping[str, pa.Array],
+    bare: Set[str | None],
+    strength: CoreStrength,
+    min_relative_mass: float,
+) -> pa.ListArray:
+    """Cautions of candidates, whose scores and measures are ``columns``; what honest thing a shape may be
+    comes from the shape."""
+    reached = columns["core_reached"].to_numpy(zero_copy_only=False)
     # One slice decides where the whole core says candidate and some core without a slice does not.
-    one_slice = sf.col("core_reached") & (sf.col("relative_mass_low") < min_relative_mass)
-    found = [
-        sf.when(~sf.col("core_reached"), NOT_REACHED),
-        sf.when(one_slice, ONE_SLICE),
-        sf.when(sf.col("is_bare_suffix"), BARE_SUFFIX),
-        sf.when(sf.col("largest_core_member_trust_share") >= _NEARLY_ALL, ONE_MEMBER),
-        *[sf.lit(text) for text in strength.cautions],
-    ]
-    own = sf.filter(sf.array(*found), lambda text: text.isNotNull())
-    return sf.concat(own, sf.col("look_alikes"))
+    low = columns["relative_mass_low"].to_numpy(zero_copy_only=False)
+    trust_share = columns["largest_core_member_trust_share"].to_numpy(zero_copy_only=False)
+    is_bare = pc.is_in(columns["suffix"], value_set=pa.array(sorted(filter(None, bare)), pa.string()))
+    is_bare = is_bare.to_numpy(zero_copy_only=False)
+    if None in bare:
+        is_bare = is_bare | columns["suffix"].is_null().to_numpy(zero_copy_only=False)
+    # A null is NaN here, and over nothing.
+    hold = {
+        NOT_REACHED: ~reached,
+        ONE_SLICE: reached & (low < min_relative_mass),
+        BARE_SUFFIX: is_bare,
+        ONE_MEMBER: trust_share >= _NEARLY_ALL,
+        **{text: np.ones(len(reached), np.bool_) for text in strength.cautions},
+    }
+    masks = np.stack(list(hold.values()), axis=1)
+    offsets = np.zeros(len(masks) + 1, dtype=np.int32)
+    np.cumsum(np.count_nonzero(masks, axis=1), out=offsets[1:])
+    texts = pa.array(list(hold), pa.string()).take(pa.array(np.nonzero(masks)[1]))
+    return pa.ListArray.from_arrays(pa.array(offsets), texts)

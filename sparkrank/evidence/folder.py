@@ -68,3 +68,7 @@ class EvidenceFolder:
     def measures(self, group: int) -> Place:
         """One row a target: what its support adds up to, as Parquet."""
         return self.place.child("measures", f"{group:05d}.parquet")
+
+    def candidate_rows(self, number: int) -> Place:
+        """Rows of `spam_candidates` from one file of `host_scores`, without ranks, as Parquet."""
+        return self.place.child("candidates", f"{number:05d}.parquet")

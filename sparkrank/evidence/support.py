@@ -33,8 +33,7 @@ from sparkrank.kernels.xxhash import xxh64
 from sparkrank.names.lists import HostList
 from sparkrank.names.octets import octets_of
 from sparkrank.places import Place
-from sparkrank.tables import CANDIDATE_SUPPORT, SPAM_CANDIDATES, spark_schema
-from sparkrank.tables.measures import MEASURES
+from sparkrank.tables import CANDIDATE_SUPPORT, spark_schema
 from sparkrank.tasks import TaskRunner
 
 if TYPE_CHECKING:
@@ -89,10 +88,6 @@ class SupportFiles:
         rows = pa.concat_tables([schema.empty_table(), *(part.cast(schema) for part in parts)])
         return self.attributes.added(rows, "source", "source_attributes")
 
-    def measures_frame(self, spark: SparkSession) -> DataFrame:
-        """The evidence columns of ``spam_candidates``, with the host."""
-        return self.attributes.joined(_frame(spark, self.measures, measures_schema()), "host", "attributes")
-
     def facts(self) -> dict[str, Any]:
         """What the manifest says of the evidence."""
         return {
@@ -101,16 +96,6 @@ class SupportFiles:
             "links_followed": self.links,
             "least_share_a_link": self.least_share_a_link,
         }
-
-
-def measures_schema() -> StructType:
-    """The schema of the measures, of the priority and the reasons that they give, and of what honest
-    thing each candidate may be."""
-    from pyspark.sql.types import StructType
-
-    fields = {field.name: field for field in spark_schema(SPAM_CANDIDATES).fields}
-    found = StructType([fields[name] for name in ("host", "priority", *MEASURES, "reasons")])
-    return found.add("look_alikes", fields["cautions"].dataType, nullable=False)
 
 
 def _frame(spark: SparkSession, places: list[Place], schema: StructType) -> DataFrame:

@@ -12,6 +12,7 @@ from numpy.typing import NDArray
 from sparkrank.graph.piece_names import PieceNames
 from sparkrank.places import Place
 from sparkrank.shown import shown_value
+from sparkrank.tables import REJECTED_ROWS, arrow_schema
 
 BAD_LINKS = "bad_links"
 """The reason of a row whose ``links`` is null or not positive."""
@@ -64,3 +65,11 @@ def write_rejected(place: Place, rejected: RejectedValues) -> None:
     sink = pa.BufferOutputStream()
     pq.write_table(table, sink)
     place.write_bytes(sink.getvalue())
+
+
+def added_up(parts: list[pa.Table]) -> pa.Table:
+    """Rows of all parts; the same value for the same reason once, its rows added up."""
+    table = pa.concat_tables([arrow_schema(REJECTED_ROWS).empty_table(), *parts])
+    keys = ["source", "row_value", "reason"]
+    found = table.group_by(keys, use_threads=False).aggregate([("rows", "sum")])
+    return found.rename_columns({**{key: key for key in keys}, "rows_sum": "rows"})

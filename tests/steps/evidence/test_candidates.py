@@ -1,15 +1,24 @@
 """Which hosts are candidates, in which order, and what is said against each."""
 
 import math
-from collections.abc import Iterator
+import tempfile
+from pathlib import Path
 from typing import Any
 
+import pyarrow as pa
 import pyarrow.parquet as pq
 import pytest
 
 from sparkrank.config import Candidates
-from sparkrank.evidence.attributes import NO_ATTRIBUTES
-from sparkrank.evidence.candidates import OVER_THRESHOLDS, spam_candidates
+from sparkrank.errors import SparkrankError
+from sparkrank.evidence.candidates import (
+    OVER_THRESHOLDS,
+    CandidateRows,
+    CountSuffixes,
+    ranked,
+    ranked_frame,
+    rows_of,
+)
 from sparkrank.evidence.cautions import (
     BARE_SUFFIX,
     FEW_SLICES,
@@ -17,14 +26,13 @@ from sparkrank.evidence.cautions import (
     ONE_SLICE,
     THIN_CORE,
     CoreStrength,
+    bare_suffixes,
     core_strength,
 )
-from sparkrank.evidence.support import measures_schema
-from sparkrank.places import resolve
-from sparkrank.publish.attempts import RunFolder, new_attempt_id
-from sparkrank.publish.lock import hold_run
-from sparkrank.publish.write import publish_table
-from sparkrank.tables import HOST_SCORES, SPAM_CANDIDATES, spark_schema
+from sparkrank.evidence.folder import EvidenceFolder
+from sparkrank.places import Place, resolve
+from sparkrank.tables import HOST_SCORES, SPAM_CANDIDATES, arrow_schema
+from sparkrank.tables.measures import MEASURES
 
 DEFAULTS = Candidates(min_scaled_pagerank=10.0, min_relative_mass=0.5)
 STRONG = CoreStrength(start=67.0, hidden_boosters=12.0, slices=3)
@@ -58,43 +66,71 @@ def score(host: str, **values: Any) -> dict[str, Any]:
 
 
 def candidates(
-    spark,
     rows: list[dict[str, Any]],
     thresholds: Candidates = DEFAULTS,
     strength: CoreStrength = STRONG,
     covered: bool = True,
+    files: int = 3,
 ) -> list[dict[str, Any]]:
-    """The candidates in the order of their ranks; a core member covers the suffix unless told otherwise."""
+    """The candidates in the order of their ranks; a core member covers the suffix unless told otherwise.
+
+    Scores and measures lie in some files each, as the stages before leave them.
+    """
     given = [*rows, score(**COVERED)] if covered else rows
-    found = spam_candidates(frame(spark, given), measures(spark, given), thresholds, strength)
-    return [row.asDict() for row in found.orderBy("rank").collect()]
+    with tempfile.TemporaryDirectory() as folder:
+        found = ranked(candidate_rows(Path(folder), given, thresholds, strength, files))
+    return sorted(found.to_pylist(), key=lambda row: row["rank"])
 
 
-def frame(spark, rows: list[dict[str, Any]]):
-    names = HOST_SCORES.column_names
-    return spark.createDataFrame(
-        [tuple(row[name] for name in names) for row in rows], spark_schema(HOST_SCORES)
+def candidate_rows(
+    folder: Path, given: list[dict[str, Any]], wanted: Any, strength: CoreStrength, files: int
+) -> pa.Table:
+    scores = [write(folder / f"scores-{i}", score_table(given[i::files])) for i in range(files)]
+    measured = sorted(given, key=lambda row: row["host"][::-1])
+    measures = [write(folder / f"measures-{i}", measure_table(measured[i::2])) for i in range(2)]
+    evidence = EvidenceFolder(place=resolve(str(folder / "evidence")))
+    suffixes = CountSuffixes(scores)
+    task = CandidateRows(
+        folder=evidence,
+        scores=scores,
+        measures=measures,
+        wanted=wanted,
+        bare=frozenset(bare_suffixes(suffixes(number) for number in range(files))),
+        strength=strength,
+        min_relative_mass=DEFAULTS.min_relative_mass
+        if isinstance(wanted, tuple)
+        else wanted.min_relative_mass,
     )
+    written = [evidence.candidate_rows(number) for number in range(files) if task(number)]
+    return rows_of(written)
 
 
-def measures(spark, rows: list[dict[str, Any]]):
+def write(path: Path, table: pa.Table) -> Place:
+    pq.write_table(table, path)
+    return resolve(str(path))
+
+
+def score_table(rows: list[dict[str, Any]]) -> pa.Table:
+    schema = arrow_schema(HOST_SCORES)
+    return pa.Table.from_pylist([{name: row[name] for name in schema.names} for row in rows], schema)
+
+
+def measure_table(rows: list[dict[str, Any]]) -> pa.Table:
     """Measures of every host, told apart by nothing."""
-    schema = measures_schema()
-    values = {"double": 0.25, "bigint": 4}
-    rest = [values[field.dataType.simpleString()] for field in schema.fields[2:-2]]
-    given = [(row["host"], row["priority"], *rest, row["reasons"], row["look_alikes"]) for row in rows]
-    return NO_ATTRIBUTES.joined(spark.createDataFrame(given, schema), "host", "attributes")
-
-
-@pytest.fixture
-def many_partitions(spark) -> Iterator[None]:
-    settings = {"spark.sql.shuffle.partitions": "5", "spark.sql.adaptive.enabled": "false"}
-    before = {key: spark.conf.get(key) for key in settings}
-    for key, value in settings.items():
-        spark.conf.set(key, value)
-    yield
-    for key, value in before.items():
-        spark.conf.set(key, value)
+    schema = arrow_schema(SPAM_CANDIDATES)
+    kinds = {pa.float64(): 0.25, pa.int64(): 4}
+    fields = [schema.field(name) for name in ("host", "priority", *MEASURES, "reasons")]
+    given = [
+        {
+            **{field.name: kinds.get(field.type) for field in fields},
+            **row,
+            "largest_core_member_trust_share": 0.25,
+        }
+        for row in rows
+    ]
+    fields.append(pa.field("look_alikes", pa.list_(pa.string())))
+    laid = pa.schema(fields)
+    return pa.Table.from_pylist([{name: row[name] for name in laid.names} for row in given], laid)
 
 
 # Cautions by host at the default thresholds; the hosts' scores differ from a plain one's as given.
@@ -127,10 +163,10 @@ NO_CANDIDATES = [
 
 
 @pytest.fixture(scope="module")
-def at_defaults(spark) -> dict[str, dict[str, Any]]:
+def at_defaults() -> dict[str, dict[str, Any]]:
     """Candidates by host at the default thresholds."""
     rows = [score(host, **values) for host, (values, _) in CAUTIONS.items()]
-    return {row["host"]: row for row in candidates(spark, [*rows, *NO_CANDIDATES])}
+    return {row["host"]: row for row in candidates([*rows, *NO_CANDIDATES])}
 
 
 def test_both_thresholds_are_at_least_and_members_are_left_out(at_defaults) -> None:
@@ -149,7 +185,7 @@ def test_scores_are_taken_over_unchanged(at_defaults, host) -> None:
     assert {name: at_defaults[host][name] for name in given} == given
 
 
-def test_a_threshold_far_below_zero_lists_every_host_of_enough_pagerank_by_priority(spark) -> None:
+def test_a_threshold_far_below_zero_lists_every_host_of_enough_pagerank_by_priority() -> None:
     rows = [
         score("small.test", priority=0.9),
         score("large.test", priority=2.7),
@@ -159,26 +195,26 @@ def test_a_threshold_far_below_zero_lists_every_host_of_enough_pagerank_by_prior
         score("below-rho.test", scaled_pagerank=9.9, priority=9.0),
         score("member.test", is_core=True, priority=9.0),
     ]
-    found = candidates(spark, rows, Candidates(min_scaled_pagerank=10.0, min_relative_mass=-1e6))
+    found = candidates(rows, Candidates(min_scaled_pagerank=10.0, min_relative_mass=-1e6))
     order = ["large.test", "unknown.test", "small.test", "negative.test", "far-below.test"]
     assert [row["host"] for row in found] == order
     assert [row["priority"] for row in found] == [2.7, 1.5, 0.9, 1e-9, 0.0]
     assert [row["rank"] for row in found] == [1, 2, 3, 4, 5]
 
 
-def test_a_candidate_without_a_reason_of_its_own_says_so(spark) -> None:
+def test_a_candidate_without_a_reason_of_its_own_says_so() -> None:
     rows = [score("with.test", reasons=["one", "two"]), score("without.test", reasons=[])]
-    found = {row["host"]: row["reasons"] for row in candidates(spark, rows)}
+    found = {row["host"]: row["reasons"] for row in candidates(rows)}
     assert found == {"with.test": ["one", "two"], "without.test": [OVER_THRESHOLDS]}
 
 
-def test_equal_priorities_order_by_host_over_all_partitions(spark, many_partitions) -> None:
+def test_equal_priorities_order_by_host_over_all_partitions() -> None:
     rows = [
         score(f"{name}{i:02d}.test", priority=priority)
         for i in range(30)
         for name, priority in (("b", 1.0), ("a", 2.0))
     ]
-    found = candidates(spark, rows[::-1])
+    found = candidates(rows[::-1])
     assert [row["host"] for row in found] == [
         *(f"a{i:02d}.test" for i in range(30)),
         *(f"b{i:02d}.test" for i in range(30)),
@@ -187,20 +223,20 @@ def test_equal_priorities_order_by_host_over_all_partitions(spark, many_partitio
 
 
 @pytest.mark.parametrize(("hosts", "cautions"), [(100, []), (101, [BARE_SUFFIX])])
-def test_a_suffix_with_less_than_a_tenth_of_its_even_share_is_bare(spark, hosts, cautions) -> None:
+def test_a_suffix_with_less_than_a_tenth_of_its_even_share_is_bare(hosts, cautions) -> None:
     """20 members over 200 hosts: a suffix of 100 hosts would have 10, and has 1."""
     thin = {"suffix": "thin.test", "scaled_pagerank": 1.0}
     rows = [score("candidate.thin.test", suffix="thin.test")]
     rows += [score(f"h{i}.thin.test", **thin, is_core=i == 0) for i in range(hosts - 1)]
     rows += [score(f"h{i}.good.test", scaled_pagerank=1.0, is_core=i < 19) for i in range(100)]
-    (row,) = candidates(spark, rows, covered=False)
+    (row,) = candidates(rows, covered=False)
     assert (row["host"], row["cautions"]) == ("candidate.thin.test", cautions)
 
 
-def test_what_speaks_against_the_core_is_on_every_candidate(spark) -> None:
+def test_what_speaks_against_the_core_is_on_every_candidate() -> None:
     weak = CoreStrength(start=1e5, hidden_boosters=1000.0, slices=1)
     rows = [score("one.test"), score("two.test", core_reached=False)]
-    found = candidates(spark, rows, strength=weak)
+    found = candidates(rows, strength=weak)
     assert {row["host"]: row["cautions"] for row in found} == {
         "one.test": [FEW_SLICES, THIN_CORE],
         "two.test": [NOT_REACHED, FEW_SLICES, THIN_CORE],
@@ -246,13 +282,41 @@ def test_the_farm_that_a_core_link_hides() -> None:
     assert strength(10**9, 1, min_relative_mass=1.0).hidden_boosters is None
 
 
-def test_no_candidates_are_an_empty_table(spark, tmp_path) -> None:
-    output = resolve(str(tmp_path))
+def test_no_candidates_are_an_empty_table(tmp_path) -> None:
     rows = [*NO_CANDIDATES, score(**COVERED)]
-    found = spam_candidates(frame(spark, rows), measures(spark, rows), DEFAULTS, STRONG)
-    with hold_run(output, "run-1") as lock:
-        run = RunFolder(output=output, run_id="run-1", attempt_id=new_attempt_id(), lock=lock)
-        entry = publish_table(found, SPAM_CANDIDATES, run)
-    assert (entry.rows, [file.rows for file in entry.files]) == (0, [0])
-    schema = pq.read_schema(output.below(entry.files[0].path).local_path)
-    assert tuple(schema.names) == SPAM_CANDIDATES.column_names
+    found = candidate_rows(tmp_path, rows, DEFAULTS, STRONG, files=2)
+    assert found.num_rows == 0
+    assert set(ranked(found).schema.names) == set(SPAM_CANDIDATES.column_names) - {"attributes", "farm_group"}
+
+
+def test_ranks_of_many_are_those_of_few(spark) -> None:
+    """The way through Spark, for lists too long for the driver."""
+    given = [{"host": f"h{i % 17:02d}-{i}.test", "priority": float(i % 5)} for i in range(200)]
+    few = ranked(pa.Table.from_pylist(given)).sort_by("rank").to_pylist()
+    frame = spark.createDataFrame(
+        [(row["host"], row["priority"]) for row in given], "host string, priority double"
+    )
+    many = ranked_frame(frame.repartition(5)).orderBy("rank").collect()
+    assert [row.asDict() for row in many] == few
+
+
+def test_named_hosts_are_taken_whatever_their_scores(tmp_path) -> None:
+    rows = [score("low.test", scaled_pagerank=1.0, relative_mass=-3.0), score("other.test"), score(**COVERED)]
+    found = candidate_rows(tmp_path, rows, ("low.test", COVERED["host"]), STRONG, files=2)
+    assert sorted(found["host"].to_pylist()) == [COVERED["host"], "low.test"]
+
+
+def test_a_candidate_without_measures_is_an_error(tmp_path) -> None:
+    scores = [write(tmp_path / "scores", score_table([score("a.test"), score("b.test")]))]
+    measures = [write(tmp_path / "measures", measure_table([score("a.test")]))]
+    task = CandidateRows(
+        folder=EvidenceFolder(place=resolve(str(tmp_path / "evidence"))),
+        scores=scores,
+        measures=measures,
+        wanted=DEFAULTS,
+        bare=frozenset(),
+        strength=STRONG,
+        min_relative_mass=0.5,
+    )
+    with pytest.raises(SparkrankError, match="expected the measures of 2 hosts, found 1"):
+        task(0)
