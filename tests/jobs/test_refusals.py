@@ -210,6 +210,6 @@ def test_unknown_keys_in_file_and_argument(desk, capsys) -> None:
     assert desk.start("run_pipeline", "--config", str(config)) == 2
     assert capsys.readouterr().err == (
         f"sparkrank: section solver in {config}: expected one of run, input, names, graph, solve, mass, "
-        "candidates, found an unknown section; did you mean solve?\n"
+        "candidates, evidence, found an unknown section; did you mean solve?\n"
     )
     assert not desk.output.exists()
