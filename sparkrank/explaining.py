@@ -28,7 +28,7 @@ from sparkrank.publish.manifest import Manifest, check_run, write_manifest
 from sparkrank.ranking import candidate_files, gather, strength_of_core
 from sparkrank.shown import shown_value
 from sparkrank.stages import RunInputs, build, scored_before
-from sparkrank.tables import EXPLAINED_HOSTS, EXPLAINED_SUPPORT, TableSpec, arrow_schema
+from sparkrank.tables import EXPLAINED_HOSTS, EXPLAINED_SUPPORT, FARM_GROUPS, TableSpec, arrow_schema
 
 log = logging.getLogger(__name__)
 
@@ -63,6 +63,8 @@ def explain(context: JobContext, inputs: RunInputs, hosts: list[str]) -> list[st
     listed = set(rows["host"].to_pylist())
     if others := [host for host in hosts if host not in listed]:
         more_rows, more_support = _gathered(context, inputs, others)
+        groups = _published(context, manifest.tables["farm_groups"], FARM_GROUPS, others)
+        more_rows = _with_groups(more_rows, groups)
         rows = pa.concat_tables([rows, more_rows])
         support = pa.concat_tables([support, more_support])
     tables = {
@@ -98,6 +100,7 @@ def _gathered(context: JobContext, inputs: RunInputs, hosts: list[str]) -> tuple
     rows = rows_of(candidate_files(context, scored, found, tuple(hosts), strength))
     rows = found.attributes.added(rows, "host", "attributes")
     rows = rows.append_column("rank", pa.nulls(rows.num_rows, pa.int32()))
+    rows = rows.append_column("farm_group", pa.nulls(rows.num_rows, pa.string()))
     support = found.support_table()
     found.folder.place.delete_tree()
     schemas = (arrow_schema(EXPLAINED_HOSTS), arrow_schema(EXPLAINED_SUPPORT))
@@ -106,6 +109,13 @@ def _gathered(context: JobContext, inputs: RunInputs, hosts: list[str]) -> tuple
         for table, schema in zip((rows, support), schemas, strict=True)
     ]
     return cast[0], cast[1]
+
+
+def _with_groups(rows: pa.Table, groups: pa.Table) -> pa.Table:
+    """The rows with the group that each host is a member of: those not listed are so as boosters."""
+    group_of = dict(zip(groups["host"].to_pylist(), groups["group"].to_pylist(), strict=True))
+    found = pa.array([group_of.get(host) for host in rows["host"].to_pylist()], pa.string())
+    return rows.set_column(rows.schema.get_field_index("farm_group"), rows.schema.field("farm_group"), found)
 
 
 def _complete(context: JobContext, inputs: RunInputs) -> Manifest:

@@ -20,6 +20,7 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 import pyarrow as pa
+import pyarrow.compute as pc
 import pyarrow.parquet as pq
 
 from sparkrank.arrays import read_arrays, write_arrays
@@ -166,6 +167,16 @@ class GroupFiles:
         if not self.rows:
             return spark.createDataFrame([], spark_schema(FARM_GROUPS))
         return spark.read.schema(spark_schema(FARM_GROUPS)).parquet(*(place.uri for place in self.rows))
+
+    def added(self, rows: pa.Table) -> pa.Table:
+        """Rows of candidates with a last column ``farm_group``."""
+        none = pa.table({"host": pa.array([], pa.string()), "farm_group": pa.array([], pa.string())})
+        found = [pq.read_table(place.path, filesystem=place.filesystem) for place in self.candidates]
+        known = pa.concat_tables(
+            [none, *(table.select(none.schema.names).cast(none.schema) for table in found)]
+        )
+        at = pc.index_in(rows["host"], value_set=known["host"])
+        return rows.append_column("farm_group", known["farm_group"].take(at))
 
     def candidate_frame(self, spark: SparkSession) -> DataFrame:
         """``host`` and ``farm_group`` of the candidates that are in one."""

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
-from typing import Any
+from typing import Any, NamedTuple
 
 import numpy as np
 import pyarrow as pa
@@ -11,6 +11,7 @@ import pyarrow.parquet as pq
 from numpy.typing import NDArray
 
 from sparkrank.arrays import read_arrays
+from sparkrank.evidence.group_work import write_strong_links
 from sparkrank.evidence.paths import Gathering
 from sparkrank.evidence.shapes import GroupShapes, group_shapes, source_keys
 from sparkrank.evidence.sources import DIRECT, KINDS, ORIGIN, Sources, by_contribution
@@ -24,6 +25,13 @@ from sparkrank.tables.measures import MEASURES
 LISTED_SHARE = 0.95
 
 
+class RowsReport(NamedTuple):
+    """Rows of support, and strong links, of a group of targets."""
+
+    support: int
+    strong_links: int
+
+
 @dataclass(frozen=True)
 class GroupRows:
     """One group's rows; ``chunks[kind][s]`` are the files of a kind that stripe s left."""
@@ -35,7 +43,7 @@ class GroupRows:
     """Steps that were followed."""
     listed: int
 
-    def __call__(self, group: int) -> int:
+    def __call__(self, group: int) -> RowsReport:
         gathering = self.gathering
         low, high = self.groups[group]
         score = gathering.targets.score[low:high]
@@ -59,7 +67,8 @@ class GroupRows:
         ordered["reasons"] = _texts(shapes.marks.reasons, REASONS)
         ordered["look_alikes"] = _texts(shapes.marks.cautions, CAUTIONS)
         _write(gathering.folder.measures(group), pa.table(ordered))
-        return int(support.num_rows)
+        strong = write_strong_links(gathering, group, low, shapes.strong)
+        return RowsReport(support.num_rows, strong)
 
     def _hosts(self, low: int, high: int) -> pa.Array:
         """Names of the group's targets."""

@@ -11,6 +11,7 @@ from numpy.typing import NDArray
 from sparkrank.arrays import read_arrays
 from sparkrank.evidence.paths import Gathering
 from sparkrank.evidence.sources import DIRECT, ORIGIN, Sources
+from sparkrank.kernels.belonging import StrongLinks, strong_links
 from sparkrank.kernels.reasons import Marks, marks
 from sparkrank.kernels.shape import priority, shape_columns
 from sparkrank.kernels.sources import (
@@ -24,6 +25,7 @@ from sparkrank.kernels.sources import (
 )
 
 _SOURCE_BITS = 40  # hosts of the whole graph
+_SOURCE_MASK = (1 << _SOURCE_BITS) - 1
 _DISTANCES = 3
 _LINK_TYPES = {
     "target": np.int64,
@@ -49,6 +51,9 @@ class GroupShapes:
     kinds: NDArray[np.int8]
     """What each of these looks like, by number."""
     marks: Marks
+
+    strong: StrongLinks
+    """What may hold the targets and their sources together."""
 
     def kind_of(self, keys: NDArray[np.int64]) -> NDArray[np.int8]:
         """Kinds of some of the direct links."""
@@ -121,8 +126,14 @@ def group_shapes(
         **_origin_measures(origins, targets, n),
         "largest_core_member_trust_share": _largest_member(gathering, origins, targets),
     }
-    found = marks(shape, arrays, sums)
-    return GroupShapes(measures=measures, direct_keys=keys, kinds=kinds, marks=found)
+    is_core = direct["is_core"] if direct else np.zeros(0, np.bool_)
+    return GroupShapes(
+        measures=measures,
+        direct_keys=keys,
+        kinds=kinds,
+        marks=marks(shape, arrays, sums),
+        strong=strong_links(links, keys & _SOURCE_MASK, is_core, kinds, arrays, damping),
+    )
 
 
 def _own_values(gathering: Gathering, low: int, high: int) -> dict[str, NDArray[Any]]:

@@ -12,7 +12,7 @@ from __future__ import annotations
 
 import logging
 import time
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -63,6 +63,10 @@ class SupportFiles:
     links: int
     rows: int
     least_share_a_link: float
+    gathering: Gathering | None = None
+    """None where there was no target."""
+    strong_links: list[int] = field(default_factory=list)
+    """Number of them by group of targets, for ``find_groups``."""
     attributes: AttributeFiles = NO_ATTRIBUTES
 
     @property
@@ -153,15 +157,18 @@ def gather_support(
         chunks = _gather_sources(gathering, stripes, kept, groups, settings.listed_sources)
     with TaskRunner(spark, len(groups)) as group_tasks:
         task = GroupRows(gathering, groups, chunks, len(kept), settings.listed_sources)
-        rows = group_tasks.run(task, "evidence: rows")
-    log.info("evidence: %s sources listed, %.1f s in all", f"{sum(rows):,}", time.monotonic() - started)
+        reports = group_tasks.run(task, "evidence: rows")
+    listed = sum(report.support for report in reports)
+    log.info("evidence: %s sources listed, %.1f s in all", f"{listed:,}", time.monotonic() - started)
     return SupportFiles(
         folder=folder,
         targets=n_targets,
         groups=len(groups),
         steps=len(kept) - 1,
         links=links,
-        rows=sum(rows),
+        rows=listed,
+        gathering=gathering,
+        strong_links=[report.strong_links for report in reports],
         least_share_a_link=share,
     )
 

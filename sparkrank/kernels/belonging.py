@@ -2,9 +2,9 @@
 
 A link is *strong* if its source gives a large part of what it has to the candidate and looks close
 (kernels.sources): a tenth of its out-weight or more.  So no host has more than ten strong links, and a
-directory has none, however many candidates it links to.  A candidate whose strong links bring less than a
-quarter of what its in-links give has none: they are not what its score is made of.  So it is with a group:
-where its members, who are in no other, bring its candidates less, it is none.
+directory has none, however many candidates it links to; nor have members of the good core.  A candidate whose
+strong links bring less than a quarter of what its in-links give has none: they are not what its score is made
+of.  So it is with a group: where its members, who are in no other, bring its candidates less, it is none.
 
 What holds two candidates together is one of two things:
 
@@ -79,6 +79,7 @@ class SharedSources(NamedTuple):
 def strong_links(
     links: DirectLinks,
     source: NDArray[np.int64],
+    is_core: NDArray[np.bool_],
     kinds: NDArray[np.int8],
     candidates: CandidateArrays,
     damping: float,
@@ -88,12 +89,13 @@ def strong_links(
     Parameters
     ----------
     source : shape (m,), number of each link's source.
+    is_core : shape (m,), whether it is a member of the good core: reviewed, and a booster of nobody.
     kinds : shape (m,), what each looks like (kernels.sources).
     """
     of = owners(links.offsets)
     given = contributions(links, damping)
     total = add_by_candidate(links, given)
-    strong = (kinds == CLOSE) & (links.transition >= LEAST_HANDED)
+    strong = (kinds == CLOSE) & (links.transition >= LEAST_HANDED) & ~is_core
     enough = add_by_candidate(links, np.where(strong, given, 0.0)) >= LEAST_STRONG * total
     at = np.flatnonzero(strong & enough[of])
     of, given, score = of[at], given[at], links.score[at]

@@ -11,6 +11,7 @@ from sparkrank.tables.evidence import (
     EXPLAINED_SUPPORT,
     SPAM_CANDIDATES,
 )
+from sparkrank.tables.groups import FARM_GROUPS
 from sparkrank.tables.scores import HOST_SCORES, REJECTED_ROWS
 from sparkrank.tables.spec import ColumnSpec, ColumnType, TableSpec, arrow_schema, spark_schema
 
@@ -18,6 +19,7 @@ __all__ = [
     "CANDIDATE_SUPPORT",
     "EXPLAINED_HOSTS",
     "EXPLAINED_SUPPORT",
+    "FARM_GROUPS",
     "HOST_SCORES",
     "REJECTED_ROWS",
     "SPAM_CANDIDATES",

@@ -6,10 +6,19 @@ from sparkrank.tables.evidence import (
     EXPLAINED_SUPPORT,
     SPAM_CANDIDATES,
 )
+from sparkrank.tables.groups import FARM_GROUPS
 from sparkrank.tables.scores import HOST_SCORES, REJECTED_ROWS
 from sparkrank.tables.spec import TableSpec, table_markdown
 
-_ALL = (HOST_SCORES, SPAM_CANDIDATES, CANDIDATE_SUPPORT, REJECTED_ROWS, EXPLAINED_HOSTS, EXPLAINED_SUPPORT)
+_ALL = (
+    HOST_SCORES,
+    SPAM_CANDIDATES,
+    CANDIDATE_SUPPORT,
+    FARM_GROUPS,
+    REJECTED_ROWS,
+    EXPLAINED_HOSTS,
+    EXPLAINED_SUPPORT,
+)
 
 TABLES: dict[str, TableSpec] = {table.name: table for table in _ALL}
 """All tables by name, in the order of the reference."""

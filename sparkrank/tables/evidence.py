@@ -3,6 +3,7 @@
 import dataclasses
 
 from sparkrank.tables.columns import DEGREE_COLUMNS, HOST, LEAD, NAME_COLUMNS, SCORE_COLUMNS
+from sparkrank.tables.groups import FARM_GROUP
 from sparkrank.tables.measures import SUPPORT_MEASURES
 from sparkrank.tables.spec import ColumnSpec, ColumnType, TableSpec
 
@@ -43,6 +44,7 @@ SPAM_CANDIDATES = TableSpec(
         *DEGREE_COLUMNS,
         *SCORE_COLUMNS,
         *SUPPORT_MEASURES,
+        FARM_GROUP,
         ColumnSpec(
             name="reasons",
             type=ColumnType.STRINGS,

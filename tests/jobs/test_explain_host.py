@@ -37,6 +37,9 @@ def test_listed_or_not_in_words_and_as_tables(asked, finished, spark, capsys) ->
     assert [row["rank"] for row in hosts.values()] == [None, 1, None]
     (listed,) = [row for row in desk.table("spam_candidates") if row["host"] == "target.test"]
     assert hosts["target.test"] == listed
+    # A booster is told its group, too.
+    groups = [row["farm_group"] for row in hosts.values()]
+    assert groups == ["target.test", "target.test", None]
     for name in ("booster-0.test", "town-0.example"):
         assert {hosts[name][key] for key in ("scaled_pagerank", "trust")} <= set(
             next(row for row in desk.table("host_scores") if row["host"] == name).values()

@@ -48,6 +48,20 @@ def test_rows_are_in_the_declared_order(finished) -> None:
     assert order == sorted(order)
 
 
+def test_groups_are_those_that_candidates_name(finished) -> None:
+    groups = finished.table("farm_groups")
+    farm = [row for row in groups if row["group"] == "target.test"]
+    # The small town with the guest book gives it a fifth of what it has, as a booster with decoys would.
+    roles = {town.GUEST_BOOK[0][0]: "booster", "target.test": "target"}
+    roles |= {f"booster-{i}.test": "booster" for i in range(town.BOOSTERS)}
+    assert {row["host"]: row["role"] for row in farm} == roles
+    assert {(row["shape"], row["hosts"], row["targets"]) for row in farm} == {("star", len(roles), 1)}
+    named = {row["host"]: row["farm_group"] for row in finished.table("spam_candidates")}
+    member_of = {row["host"]: row["group"] for row in groups if row["role"] != "booster"}
+    assert {host: group for host, group in named.items() if group} == member_of
+    assert finished.manifest()["evidence"]["groups"] == len({row["group"] for row in groups})
+
+
 def test_counts_of_the_graph(finished) -> None:
     graph = finished.manifest()["graph"]
     reasons: dict[str, int] = {}

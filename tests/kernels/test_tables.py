@@ -77,6 +77,7 @@ AGREED = {
         ("priority", "double", False),
         *SCORES,
         *MEASURED,
+        ("farm_group", "string", True),
         ("reasons", "array<string>", False),
         ("cautions", "array<string>", False),
         ("attributes", "string", True),
@@ -104,6 +105,19 @@ AGREED = {
         ("source_core_distance", "int", True),
         ("source_attributes", "string", True),
     ],
+    "farm_groups": [
+        ("group", "string", False),
+        ("host", "string", False),
+        ("role", "string", False),
+        ("shape", "string", False),
+        ("hosts", "long", False),
+        ("targets", "long", False),
+        ("boosters", "long", False),
+        ("domains", "long", False),
+        ("largest_domain_share", "double", False),
+        ("total_mass", "double", False),
+        ("explained_share", "double", False),
+    ],
     "rejected_rows": [
         ("source", "string", False),
         ("row_value", "string", True),
@@ -119,6 +133,7 @@ ORDERS = {
     "host_scores": ("host",),
     "spam_candidates": ("rank",),
     "candidate_support": ("host", "kind", "position"),
+    "farm_groups": ("group", "host"),
     "rejected_rows": ("source", "row_value", "reason", "rows"),
 }
 
@@ -180,7 +195,7 @@ def test_tables_by_name() -> None:
     assert table_named("host_scores") is HOST_SCORES
     with pytest.raises(
         KeyError,
-        match="expected one of the tables host_scores, spam_candidates, candidate_support, rejected_rows",
+        match="expected one of the tables host_scores, spam_candidates, candidate_support, farm_groups",
     ):
         table_named("scores")
     with pytest.raises(KeyError, match="table host_scores has no column rank"):

@@ -29,12 +29,19 @@ class Group(NamedTuple):
     shape: str
 
 
-def strong_of(n: int, edges: Links, candidates: Sequence[int], domains: Sequence[int] | None = None):
+def strong_of(
+    n: int,
+    edges: Links,
+    candidates: Sequence[int],
+    domains: Sequence[int] | None = None,
+    core: Sequence[int] = (),
+):
     """Strong links of a graph's candidates, and its exact support."""
     support = gathered(n, edges, candidates, domains)
     links, arrays = support.links, support.candidates
     kinds = source_kinds(links, arrays, outside_support(links, arrays, DAMPING))
-    return strong_links(links, support.sources, kinds, arrays, DAMPING), support
+    is_core = np.isin(support.sources, list(core))
+    return strong_links(links, support.sources, is_core, kinds, arrays, DAMPING), support
 
 
 def own_numbers(strong: StrongLinks, candidates: Sequence[int]) -> np.ndarray:

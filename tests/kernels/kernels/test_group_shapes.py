@@ -123,6 +123,12 @@ def test_a_candidate_that_honest_hosts_carry_has_no_strong_links() -> None:
     assert more.source.tolist() == list(range(13, 20))
 
 
+def test_a_core_member_is_a_booster_of_nobody() -> None:
+    """Its page has one link, which somebody left there."""
+    strong, _ = strong_of(21, fan(B, 0), [0], core=[7])
+    assert strong.source.tolist() == [u for u in B if u != 7]
+
+
 @pytest.mark.parametrize(("farms", "groups"), [(9, 10), (16, 16)])
 def test_a_candidate_whose_sources_belong_elsewhere_is_in_no_group(farms, groups) -> None:
     """Two boosters of its own, and one of each of so many farms, to which that means more."""
