@@ -32,7 +32,7 @@ def read_table(output: Place, manifest: dict[str, Any], name: str) -> Any:
 
 def candidate_lines(rows: list[dict[str, Any]]) -> list[str]:
     """The candidates as lines of a table, hosts cut and escaped."""
-    lines = [("rank", "host", "scaled PageRank", "relative mass", "its range", "cautions")]
+    lines = [("rank", "host", "scaled PageRank", "relative mass", "its range", "cautions", "first reason")]
     for row in rows:
         host = shown_value(row["host"])
         low, high = row["relative_mass_low"], row["relative_mass_high"]
@@ -44,12 +44,13 @@ def candidate_lines(rows: list[dict[str, Any]]) -> list[str]:
                 f"{row['relative_mass']:.3f}",
                 "unknown" if low is None else f"{low:.3f} to {high:.3f}",
                 str(len(row["cautions"])),
+                row["reasons"][0],
             )
         )
     widths = [max(len(line[i]) for line in lines) for i in range(len(lines[0]))]
     # Text to the left, numbers to the right.
     aligned = [
-        [cell.ljust(width) if i == 1 else cell.rjust(width) for i, (cell, width) in enumerate(pairs)]
+        [cell.ljust(width) if i in (1, 6) else cell.rjust(width) for i, (cell, width) in enumerate(pairs)]
         for pairs in (list(zip(line, widths, strict=True)) for line in lines)
     ]
     return ["  ".join(cells).rstrip() for cells in aligned]

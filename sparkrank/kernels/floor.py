@@ -93,7 +93,7 @@ SHAPES = {
         own=lambda k, c: 1.0 + c * k,
         gain=lambda c: 1.0,
     ),
-    "star with back-links": FarmShape(
+    "star_with_back_links": FarmShape(
         meaning="the target links back to them",
         least=1,
         own=lambda k, c: 1.0 + c * k,
@@ -105,7 +105,7 @@ SHAPES = {
         own=lambda k, c: 1.0 + c * k / (2.0 - c),
         gain=_around_a_ring,
     ),
-    "two-tier": FarmShape(
+    "two_tier": FarmShape(
         meaning="a quarter (one at least) links to the target, which links back; the others link to those",
         least=2,
         own=_two_tiers,

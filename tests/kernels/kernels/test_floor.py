@@ -52,9 +52,9 @@ def alliance(k: int) -> list[tuple[int, int]]:
 
 FARMS = {
     "star": star,
-    "star with back-links": back_star,
+    "star_with_back_links": back_star,
     "ring": ring,
-    "two-tier": two_tier,
+    "two_tier": two_tier,
     "alliance": alliance,
 }
 
@@ -102,7 +102,7 @@ def test_a_ring_scores_alike_however_many_boosters_its_target_links_back_to(retu
 
 
 def test_stars_are_those_of_the_closed_forms_and_alliances_known() -> None:
-    for shape, back_links in (("star", False), ("star with back-links", True)):
+    for shape, back_links in (("star", False), ("star_with_back_links", True)):
         single = farm_score(37, DAMPING, back_links=back_links)
         assert_allclose(target_score(shape, 37, DAMPING), single, rtol=1e-13, atol=0)
     # Two targets of 200 boosters each, in units of 1/N, by hand: (1 - c)(1 + 200c)/(1 - c).
@@ -111,7 +111,7 @@ def test_stars_are_those_of_the_closed_forms_and_alliances_known() -> None:
 
 def test_known_floors_of_the_default_score() -> None:
     shapes = floor(tau=-1e6).shapes
-    assert (shapes["star"].boosters, shapes["star with back-links"].boosters) == (11, 3)
+    assert (shapes["star"].boosters, shapes["star_with_back_links"].boosters) == (11, 3)
     # With a threshold of mass that all pass, a core link only adds to the score.
     for shape in shapes.values():
         assert shape.boosters is not None
@@ -147,7 +147,7 @@ def test_with_every_booster_score_and_mass_grow(shape: str) -> None:
 
 def test_one_link_from_a_thin_core_hides_thousands() -> None:
     """335 M hosts, a core of 5,000: 11,400 back-linked boosters stay hidden (recomputed)."""
-    found = floor(start=core_member_start(0.85, 335_000_000, 5_000)).shapes["star with back-links"]
+    found = floor(start=core_member_start(0.85, 335_000_000, 5_000)).shapes["star_with_back_links"]
     assert found.boosters == 3
     assert found.boosters_with_core_link is not None
     assert round(found.boosters_with_core_link, -2) == 11_400
@@ -167,9 +167,9 @@ def test_a_shape_has_its_least_boosters() -> None:
     found = floor(rho=0.0, tau=-1e6).shapes
     assert {name: shape.boosters for name, shape in found.items()} == {
         "star": 1,
-        "star with back-links": 1,
+        "star_with_back_links": 1,
         "ring": 2,
-        "two-tier": 2,
+        "two_tier": 2,
         "alliance": 2,
     }
 
