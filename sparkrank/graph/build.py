@@ -39,7 +39,7 @@ _SUMMED = ("rows", "edge_rows", "not_followed", "self_links", "clashes")
 _BY_REASON = ("rejected", "rejected_hosts")
 
 # Counts up whenever a change makes other work files or other canonical names from the same input.
-_LAYOUT_VERSION = 4
+_LAYOUT_VERSION = 5
 
 
 @dataclass(frozen=True, kw_only=True)

@@ -17,7 +17,11 @@ from sparkrank.arrays import read_arrays, write_arrays
 from sparkrank.errors import SparkrankError
 from sparkrank.graph.folder import GraphFolder
 from sparkrank.kernels.edges import MAX_STRIPE_HOSTS
+from sparkrank.kernels.xxhash import xxh64
+from sparkrank.names.octets import octets_of
 
+# Tells two names of one id apart: any other seed than the ids' will do.
+_CHECK_SEED = 0x5EED
 _NAME_ROWS = 1 << 17  # rows a Parquet row group of names: some MB
 
 
@@ -29,21 +33,23 @@ class HostsTask:
     n_pieces: int
 
     def __call__(self, stripe: int) -> dict[str, Any]:
-        ids, checks, names = [], [], []
+        ids, names = [], []
         for piece in range(self.n_pieces):
             found = read_arrays(self.folder.scanned_hosts(piece))
             first, end = found["bounds"][stripe : stripe + 2].tolist()
             ids.append(found["ids"][first:end])
-            checks.append(found["checks"][first:end])
-            names.append(_names(found["offsets"], found["bytes"]).slice(first, end - first))
+            names.append(_names(found, first, end))
         all_ids = np.concatenate(ids) if ids else np.zeros(0, np.int64)
         order = np.argsort(all_ids, kind="stable")
         sorted_ids = all_ids[order]
         is_first = np.ones(len(order), np.bool_)
         np.not_equal(sorted_ids[1:], sorted_ids[:-1], out=is_first[1:])
         # Two hosts of one id are neighbours now; a second hash tells them from one host seen twice.
-        sorted_checks = np.concatenate(checks)[order] if checks else np.zeros(0, np.int64)
-        clashes = int(np.count_nonzero(~is_first[1:] & (sorted_checks[1:] != sorted_checks[:-1])))
+        checks = np.concatenate(
+            [np.zeros(0, np.int64), *(xxh64(*octets_of(part), _CHECK_SEED) for part in names)]
+        )
+        checks = checks[order]
+        clashes = int(np.count_nonzero(~is_first[1:] & (checks[1:] != checks[:-1])))
         ids_here = sorted_ids[is_first]
         if len(ids_here) > MAX_STRIPE_HOSTS:
             raise SparkrankError(f"{len(ids_here)} hosts, expected at most {MAX_STRIPE_HOSTS} a stripe")
@@ -74,6 +80,10 @@ class HostsTask:
         self.folder.names(stripe).write_bytes(sink.getvalue())
 
 
-def _names(offsets: np.ndarray[Any, Any], name_bytes: np.ndarray[Any, Any]) -> pa.Array:
-    buffers = [None, pa.py_buffer(offsets), pa.py_buffer(name_bytes)]
-    return pa.Array.from_buffers(pa.large_string(), len(offsets) - 1, buffers)
+def _names(found: dict[str, np.ndarray[Any, Any]], first: int, end: int) -> pa.Array:
+    """Names of some of a piece's hosts, without a copy."""
+    offsets = np.zeros(end - first + 1, np.int64)
+    np.cumsum(found["lengths"][first:end], out=offsets[1:])
+    offsets += int(found["lengths"][:first].sum(dtype=np.int64))
+    buffers = [None, pa.py_buffer(offsets), pa.py_buffer(found["bytes"])]
+    return pa.Array.from_buffers(pa.large_string(), end - first, buffers)

@@ -13,6 +13,7 @@ from typing import Any
 
 import numpy as np
 import pyarrow as pa
+import pyarrow.compute as pc
 from numpy.typing import NDArray
 
 from sparkrank.arrays import write_arrays
@@ -23,12 +24,9 @@ from sparkrank.graph.pieces import Piece
 from sparkrank.graph.plan import GridPlan
 from sparkrank.graph.rejected import RejectedValues, write_rejected
 from sparkrank.kernels.stripes import stripe_of
-from sparkrank.kernels.xxhash import xxh64
 from sparkrank.names.octets import octets_of
 from sparkrank.names.suffixes import SuffixRules
 
-# Tells two names of one id apart: any other seed will do.
-_CHECK_SEED = 0x5EED
 # Distinct values a row for which there is room from the start; crawls have fewer.
 _VALUES_A_ROW = 0.25
 
@@ -109,8 +107,10 @@ class _Found:
         stripes = stripe_of(hosts.ids, plan.stripes)
         bounds = np.searchsorted(stripes, np.arange(plan.stripes + 1))
         octets, offsets = octets_of(hosts.names)
-        arrays: dict[str, NDArray[Any]] = {"bounds": bounds, "ids": hosts.ids, "checks": hosts.checks}
-        write_arrays(folder.scanned_hosts(number), {**arrays, "offsets": offsets, "bytes": octets})
+        # A host has at most 253 bytes.
+        arrays: dict[str, NDArray[Any]] = {"bounds": bounds, "ids": hosts.ids}
+        arrays |= {"lengths": np.diff(offsets).astype(np.uint8), "bytes": octets}
+        write_arrays(folder.scanned_hosts(number), arrays)
         if self.rejected.counts:
             write_rejected(folder.rejected(number), self.rejected)
         edge_rows, self_links = self._write_edges(folder, plan, number, hosts.ranks, bounds)
@@ -141,11 +141,10 @@ class _Found:
         ranks[chosen] = rank
         all_names = pa.chunked_array(self.names.hosts, pa.string()).cast(pa.large_string())
         names = _one_array(all_names.take(pa.array(chosen[is_first])))
-        checks = xxh64(*octets_of(names), _CHECK_SEED)
         again = np.flatnonzero(~is_first)
         names_again = _one_array(all_names.take(pa.array(chosen[again])))
-        clashing = xxh64(*octets_of(names_again), _CHECK_SEED) != checks[rank[again]]
-        return _Hosts(ids[is_first], names, checks, ranks, int(np.count_nonzero(clashing)))
+        same = pc.equal(names_again, names.take(pa.array(rank[again])))
+        return _Hosts(ids[is_first], names, ranks, len(again) - (pc.sum(same).as_py() or 0))
 
     def _write_edges(
         self,
@@ -187,7 +186,6 @@ class _Hosts:
     ids: NDArray[np.int64]
     """Sorted and distinct: shape (hosts,)."""
     names: pa.LargeStringArray
-    checks: NDArray[np.int64]
     ranks: NDArray[np.int32]
     """Rank in ``ids`` of what each number names: shape (numbers,); of unused ones it means nothing."""
     clashes: int

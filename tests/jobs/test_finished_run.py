@@ -135,9 +135,9 @@ def test_the_manifest_tells_how_strong_the_core_is(finished) -> None:
     assert (floor["core_start"], floor["min_scaled_pagerank"]) == (core["core_start"], 10.0)
     # Smallest farms of a scaled PageRank of 10, by hand: 1 + ck, and (1 + ck)/(1 - c²) with back-links.
     assert floor["shapes"]["star"]["boosters"] == 11
-    assert floor["shapes"]["star with back-links"]["boosters"] == 3
+    assert floor["shapes"]["star_with_back_links"]["boosters"] == 3
     # The member's own PageRank, of which 1/d arrives, does a tenth of a booster's work.
-    assert floor["shapes"]["star with back-links"]["boosters_with_core_link"] == math.ceil(hidden - 0.1)
+    assert floor["shapes"]["star_with_back_links"]["boosters_with_core_link"] == math.ceil(hidden - 0.1)
     assert [column["name"] for column in manifest["columns"]] == [
         "pagerank",
         "trust: north",

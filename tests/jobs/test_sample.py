@@ -61,7 +61,7 @@ def test_it_prints_the_first_candidates_with_their_cautions(sample, manifest) ->
         assert (int(cells[0]), cells[1]) == (row["rank"], row["host"])
         assert cells[2] == f"{row['scaled_pagerank']:,.1f}"
         assert cells[3] == f"{row['relative_mass']:.3f}"
-        assert int(cells[-1]) == len(row["cautions"])
+        assert line.endswith(f"  {len(row['cautions'])}  {row['reasons'][0]}")
     assert "A score is a lead, not a verdict; unknown is not spam." in lines
     assert str(sample[0] / "runs" / "2026-11-harbour.json") in sample[1]
     for name, table in manifest["tables"].items():

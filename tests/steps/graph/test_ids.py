@@ -8,7 +8,7 @@ import pytest
 
 from sparkrank.arrays import read_arrays
 from sparkrank.errors import SparkrankError
-from sparkrank.graph import piece_names, scan
+from sparkrank.graph import hosts, piece_names
 from sparkrank.graph.plan import GridPlan
 from sparkrank.kernels.xxhash import xxh64
 from sparkrank.propagate import members
@@ -32,7 +32,7 @@ def coarse_under(*salts: int):
 
 def hash_with(monkeypatch: pytest.MonkeyPatch, hashed) -> None:
     """Takes effect in this process: where `tasks_in_process` holds."""
-    for module in (piece_names, scan, members):
+    for module in (piece_names, hosts, members):
         monkeypatch.setattr(module, "xxh64", hashed)
 
 
