@@ -30,9 +30,9 @@ def read_table(output: Place, manifest: dict[str, Any], name: str) -> Any:
     return pa.concat_tables([pq.read_table(file.path, filesystem=file.filesystem) for file in files])
 
 
-def candidate_lines(rows: list[dict[str, Any]]) -> list[str]:
-    """The candidates as lines of a table, hosts cut and escaped."""
-    lines = [("rank", "host", "scaled PageRank", "relative mass", "its range", "cautions", "first reason")]
+def candidate_lines(rows: list[dict[str, Any]], groups: dict[str, str]) -> list[str]:
+    """The candidates as lines of a table, hosts cut and escaped; ``groups`` says what each group is."""
+    lines = [("rank", "host", "scaled PageRank", "relative mass", "its range", "cautions", "in a group")]
     for row in rows:
         host = shown_value(row["host"])
         low, high = row["relative_mass_low"], row["relative_mass_high"]
@@ -44,7 +44,7 @@ def candidate_lines(rows: list[dict[str, Any]]) -> list[str]:
                 f"{row['relative_mass']:.3f}",
                 "unknown" if low is None else f"{low:.3f} to {high:.3f}",
                 str(len(row["cautions"])),
-                row["reasons"][0],
+                groups.get(row["farm_group"], "none"),
             )
         )
     widths = [max(len(line[i]) for line in lines) for i in range(len(lines[0]))]
@@ -73,9 +73,11 @@ def main() -> int:
         return 1
     candidates = read_table(output, manifest, "spam_candidates")
     rows = candidates.slice(0, SHOWN_CANDIDATES).to_pylist()
+    members = read_table(output, manifest, "farm_groups").to_pylist()
+    groups = {row["group"]: f"of {row['hosts']:,} hosts, {row['shape']}" for row in members}
     hosts = manifest["tables"]["host_scores"]["rows"]
     print(f"\nThe first {len(rows)} of {candidates.num_rows:,} candidates among {hosts:,} hosts:\n")
-    print("\n".join(candidate_lines(rows)))
+    print("\n".join(candidate_lines(rows, groups)))
     print("\nA score is a lead, not a verdict; unknown is not spam.")
     print("Read a row's cautions and look at the host before you judge it.\n")
     for name, table in manifest["tables"].items():

@@ -15,4 +15,4 @@ The packages carry the words of the data flow, in this order:
 ``session`` and ``entry`` (how a job starts and ends).
 """
 
-__version__ = "0.1.0"
+__version__ = "0.2.0"

@@ -56,12 +56,15 @@ def test_it_prints_the_first_candidates_with_their_cautions(sample, manifest) ->
     lines = sample[1].splitlines()
     start = next(i for i, line in enumerate(lines) if line.startswith("rank  host"))
     candidates = rows_of(sample, manifest, "spam_candidates")
+    groups = {row["group"]: row for row in rows_of(sample, manifest, "farm_groups")}
     for line, row in zip(lines[start + 1 : start + 11], candidates, strict=False):
         cells = line.split()
         assert (int(cells[0]), cells[1]) == (row["rank"], row["host"])
         assert cells[2] == f"{row['scaled_pagerank']:,.1f}"
         assert cells[3] == f"{row['relative_mass']:.3f}"
-        assert line.endswith(f"  {len(row['cautions'])}  {row['reasons'][0]}")
+        group = groups.get(row["farm_group"])
+        shown = "none" if group is None else f"of {group['hosts']:,} hosts, {group['shape']}"
+        assert line.endswith(f"  {len(row['cautions'])}  {shown}")
     assert "A score is a lead, not a verdict; unknown is not spam." in lines
     assert str(sample[0] / "runs" / "2026-11-harbour.json") in sample[1]
     for name, table in manifest["tables"].items():
