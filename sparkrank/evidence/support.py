@@ -25,7 +25,7 @@ from sparkrank.config import Candidates, Evidence
 from sparkrank.evidence.attributes import NO_ATTRIBUTES, AttributeFiles
 from sparkrank.evidence.folder import EvidenceFolder
 from sparkrank.evidence.paths import FollowRest, FollowStep, Gathering, target_ranges
-from sparkrank.evidence.rows import GroupRows, support_schema
+from sparkrank.evidence.rows import GroupRows, RowsReport, support_schema
 from sparkrank.evidence.sources import DIRECT, ORIGIN, DirectSources, OriginSources
 from sparkrank.evidence.values import LayValues, ScanScores
 from sparkrank.graph.build import Graph
@@ -38,7 +38,6 @@ from sparkrank.tasks import TaskRunner
 
 if TYPE_CHECKING:
     from pyspark.sql import DataFrame, SparkSession
-    from pyspark.sql.types import StructType
 
 log = logging.getLogger(__name__)
 
@@ -83,7 +82,10 @@ class SupportFiles:
 
         declared = spark_schema(CANDIDATE_SUPPORT).fields
         laid = StructType([field for field in declared if field.name != "source_attributes"])
-        return self.attributes.joined(_frame(spark, self.support, laid), "source", "source_attributes")
+        rows = spark.createDataFrame([], laid)
+        if self.support:
+            rows = spark.read.schema(laid).parquet(*(place.uri for place in self.support))
+        return self.attributes.joined(rows, "source", "source_attributes")
 
     def support_table(self) -> pa.Table:
         """The same rows here; for few."""
@@ -100,12 +102,6 @@ class SupportFiles:
             "links_followed": self.links,
             "least_share_a_link": self.least_share_a_link,
         }
-
-
-def _frame(spark: SparkSession, places: list[Place], schema: StructType) -> DataFrame:
-    if not places:
-        return spark.createDataFrame([], schema)
-    return spark.read.schema(schema).parquet(*(place.uri for place in places))
 
 
 def gather_support(
@@ -139,9 +135,7 @@ def gather_support(
         share = max(1.0 / settings.followed_links, n_targets / settings.all_followed_links)
         log.info("evidence: %s hosts, %.1f s", f"{n_targets:,}", time.monotonic() - started)
         if not n_targets:
-            return SupportFiles(
-                folder=folder, targets=0, groups=0, steps=0, links=0, rows=0, least_share_a_link=share
-            )
+            return _nothing(folder, share)
         gathering = Gathering(
             graph=graph,
             folder=folder,
@@ -155,9 +149,8 @@ def gather_support(
         kept, links = _follow(spark, gathering, stripes)
         groups = target_ranges(gathering.targets.in_degree + _GROUP_LINKS // _GROUP_TARGETS, _GROUP_LINKS)
         chunks = _gather_sources(gathering, stripes, kept, groups, settings.listed_sources)
-    with TaskRunner(spark, len(groups)) as group_tasks:
-        task = GroupRows(gathering, groups, chunks, len(kept), settings.listed_sources)
-        reports = group_tasks.run(task, "evidence: rows")
+    task = GroupRows(gathering, groups, chunks, len(kept), settings.listed_sources)
+    reports = _write_rows(spark, task)
     listed = sum(report.support for report in reports)
     log.info("evidence: %s sources listed, %.1f s in all", f"{listed:,}", time.monotonic() - started)
     return SupportFiles(
@@ -170,6 +163,19 @@ def gather_support(
         gathering=gathering,
         strong_links=[report.strong_links for report in reports],
         least_share_a_link=share,
+    )
+
+
+def _write_rows(spark: SparkSession, task: GroupRows) -> list[RowsReport]:
+    """Rows of all groups of targets; a report each."""
+    with TaskRunner(spark, len(task.groups)) as groups:
+        return groups.run(task, "evidence: rows")
+
+
+def _nothing(folder: EvidenceFolder, share: float) -> SupportFiles:
+    """What there is where no host is a target."""
+    return SupportFiles(
+        folder=folder, targets=0, groups=0, steps=0, links=0, rows=0, least_share_a_link=share
     )
 
 

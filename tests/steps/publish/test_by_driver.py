@@ -7,14 +7,13 @@ import pytest
 from sparkrank.errors import SparkrankError
 from sparkrank.publish.by_driver import publish_rows
 from sparkrank.tables import REJECTED_ROWS, TableSpec, arrow_schema
-from tests.steps.publish.test_write import (  # noqa: F401
+from tests.steps.publish.test_write import (
     BY_ROWS,
     TABLE,
     another_attempt,
     publish,
     read_back,
     rows_of,
-    run,
 )
 
 
@@ -27,7 +26,7 @@ def arrow_rows(rows: list[tuple], table: TableSpec) -> pa.Table:
 
 @pytest.mark.parametrize("table", [TABLE, BY_ROWS])
 @pytest.mark.parametrize("count", [0, 1, 500])
-def test_same_rows_order_and_digest_as_through_spark(spark, run, table, count) -> None:  # noqa: F811
+def test_same_rows_order_and_digest_as_through_spark(spark, run, table, count) -> None:
     rows = [
         (["doubt", str(i % 3)][: i % 3], f"h{i * 7919 % 1000:04d}.example", "d.example", None, i // 9, i / 7)
         for i in range(count)
@@ -41,7 +40,7 @@ def test_same_rows_order_and_digest_as_through_spark(spark, run, table, count) -
     assert entry.files[0].path.startswith(attempt.table_name(table.name))
 
 
-def test_nulls_come_first_as_in_spark(spark, run) -> None:  # noqa: F811
+def test_nulls_come_first_as_in_spark(spark, run) -> None:
     rows = [("edges.src", "b", "port", 2), ("edges.src", None, "null", 1), ("core.host", "\u00e9", "port", 3)]
     rows += [("edges.src", "", "empty", 1), ("edges.src", "B", "port", 2)]
     schema = arrow_schema(REJECTED_ROWS)
@@ -55,7 +54,7 @@ def test_nulls_come_first_as_in_spark(spark, run) -> None:  # noqa: F811
     assert [tuple(row) for row in ordered] == by_spark
 
 
-def test_same_rows_same_bytes_and_both_schemas_described(run) -> None:  # noqa: F811
+def test_same_rows_same_bytes_and_both_schemas_described(run) -> None:
     one, other = (publish_rows(arrow_rows(rows_of(40), TABLE), TABLE, another_attempt(run)) for _ in range(2))
     assert one.files[0].digest == other.files[0].digest
     schema = pq.ParquetFile(run.output.below(one.files[0].path).local_path).schema_arrow
@@ -71,6 +70,6 @@ def test_same_rows_same_bytes_and_both_schemas_described(run) -> None:  # noqa: 
         (lambda rows: rows.set_column(1, "host", pa.array([None], pa.string())), "no nulls in column host"),
     ],
 )
-def test_what_is_not_the_table_is_refused(run, change, message) -> None:  # noqa: F811
+def test_what_is_not_the_table_is_refused(run, change, message) -> None:
     with pytest.raises(SparkrankError, match=message):
         publish_rows(change(arrow_rows(rows_of(1), TABLE)), TABLE, run)

@@ -2,7 +2,6 @@
 
 import hashlib
 import itertools
-from collections.abc import Iterator
 from pathlib import Path
 from typing import Any
 
@@ -18,7 +17,6 @@ from sparkrank.publish.attempts import RunFolder, new_attempt_id
 from sparkrank.publish.by_tasks import publish_parts
 from sparkrank.publish.digest import digest_ordered_rows
 from sparkrank.publish.entries import TableEntry
-from sparkrank.publish.lock import hold_run
 from sparkrank.publish.parts import TableParts, choose_cuts, part_numbers, write_parts
 from sparkrank.publish.write import publish_table
 from sparkrank.tables import ColumnSpec, ColumnType, TableSpec, arrow_schema
@@ -77,13 +75,6 @@ def scratch(rows: pa.Table, folder: Path, *, files: int, table: TableSpec = TABL
 
 def column(rows: pa.Table, name: str) -> pa.Array:
     return pa.concat_arrays(rows[name].chunks) if rows.num_rows else pa.array([], rows[name].type)
-
-
-@pytest.fixture
-def run(tmp_path) -> Iterator[RunFolder]:
-    output = resolve(str(tmp_path / "out put"))
-    with hold_run(output, "run-1") as lock:
-        yield RunFolder(output=output, run_id="run-1", attempt_id=new_attempt_id(), lock=lock)
 
 
 @pytest.fixture

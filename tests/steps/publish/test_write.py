@@ -9,9 +9,7 @@ import pyarrow.parquet as pq
 import pytest
 
 from sparkrank.errors import SparkrankError
-from sparkrank.places import resolve
 from sparkrank.publish.attempts import RunFolder, new_attempt_id
-from sparkrank.publish.lock import hold_run
 from sparkrank.publish.write import publish_table
 from sparkrank.tables import ColumnSpec, ColumnType, TableSpec
 
@@ -37,13 +35,6 @@ BY_ROWS = TableSpec(
 
 def rows_of(count: int) -> list[tuple[Any, ...]]:
     return [([], f"h{i:04d}.example", "d.example", None, i, i / 7) for i in range(count)]
-
-
-@pytest.fixture
-def run(tmp_path) -> Iterator[RunFolder]:
-    output = resolve(str(tmp_path / "out put"))
-    with hold_run(output, "run-1") as lock:
-        yield RunFolder(output=output, run_id="run-1", attempt_id=new_attempt_id(), lock=lock)
 
 
 def another_attempt(run: RunFolder) -> RunFolder:
